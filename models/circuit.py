@@ -1,0 +1,124 @@
+"""A circuit under a delay model: inputs, nodes with their excitation functions, zero-delay defined signals."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from functools import cached_property
+
+from settled.models.logic import STABLE, Expr, and_, not_, rename, substitute, topological, var, xor
+
+
+@dataclass(frozen=True, eq=False)
+class Circuit:
+    """What carries a delay, and what excites it (Huffman; Muller).
+
+    * `inputs`: driven by the environment; `nodes`: everything that carries a delay, in a fixed order.
+    * `excitation[n]`: the excitation function of node `n`, over inputs and nodes. Node `n` is excited when its
+      value differs from it.
+    * `defined[s]`: a zero-delay signal as an expression over inputs and nodes.
+    * `outputs`: names of inputs, nodes or defined signals.
+    * `delay`, `winners`: the delay model and the switching rule, for the echo and for the meaning of a step.
+    * `notes`: sentences for the echo (such as the feedback lines chosen).
+    """
+
+    name: str
+    inputs: tuple[str, ...]
+    nodes: tuple[str, ...]
+    excitation: Mapping[str, Expr]
+    outputs: tuple[str, ...] = ()
+    defined: Mapping[str, Expr] = field(default_factory=dict)
+    delay: str = "feedback"
+    winners: str = "any"
+    notes: tuple[str, ...] = ()
+
+    @cached_property
+    def signals(self) -> tuple[str, ...]:
+        """Inputs, then nodes: the order of the bits of a packed total state, least significant first."""
+        return self.inputs + self.nodes
+
+    @cached_property
+    def place(self) -> dict[str, int]:
+        """Bit position of each input and node in a packed total state."""
+        return {name: i for i, name in enumerate(self.signals)}
+
+    @cached_property
+    def input_mask(self) -> int:
+        """The bits of the inputs in a packed total state."""
+        return (1 << len(self.inputs)) - 1
+
+    @cached_property
+    def is_excited(self) -> dict[str, Expr]:
+        """For each node, the expression that is true where it is excited."""
+        return {n: xor(var(n), self.excitation[n]) for n in self.nodes}
+
+    @cached_property
+    def is_stable(self) -> Expr:
+        """The expression that is true where no node is excited."""
+        return and_(*(not_(e) for e in self.is_excited.values()))
+
+    def resolve(self, *expressions: Expr) -> list[Expr]:
+        """`expressions` over inputs and nodes only: definitions expanded, `stable` and `excited` spelt out."""
+
+        def leaf(e: Expr) -> Expr:
+            if e is STABLE:
+                return self.is_stable
+            if e.op == "excited":
+                return self.is_excited[e.name]
+            return self.defined.get(e.name, e)
+
+        return substitute(expressions, leaf)
+
+    def signal(self, name: str) -> Expr:
+        """The signal `name` as an expression over inputs and nodes."""
+        return self.defined.get(name, var(name))
+
+    @cached_property
+    def has_feedback(self) -> bool:
+        """Whether some node's expression reads the node, directly or through others."""
+        return bool(loops(self.nodes, self.excitation))
+
+
+def expand(defined: Mapping[str, Expr]) -> dict[str, Expr]:
+    """Definitions with the definitions they read put in. Raises `ValueError` naming a cycle if there is one."""
+    order = list(definition_order(defined))
+    done: dict[str, Expr] = {}
+    for name in order:
+        done[name] = rename([defined[name]], done)[0]
+    return {name: done[name] for name in defined}
+
+
+def definition_order(defined: Mapping[str, Expr]) -> list[str]:
+    """Names of `defined`, each after those it reads. Raises `ValueError` whose text names a cycle."""
+    import networkx as nx
+
+    graph: nx.DiGraph = nx.DiGraph()
+    graph.add_nodes_from(defined)
+    for name, body in defined.items():
+        graph.add_edges_from((r, name) for r in _reads(body) if r in defined)
+    try:
+        return list(nx.lexicographical_topological_sort(graph, key=list(defined).index))
+    except nx.NetworkXUnfeasible:
+        cycle = [edge[0] for edge in nx.find_cycle(graph)]
+        raise ValueError(" -> ".join([*cycle, cycle[0]])) from None
+
+
+def loops(nodes: Sequence[str], excitation: Mapping[str, Expr]) -> list[list[str]]:
+    """The feedback loops, as the sets of nodes that reach one another; each in node order, in order of first node."""
+    import networkx as nx
+
+    graph: nx.DiGraph = nx.DiGraph()
+    graph.add_nodes_from(nodes)
+    for name in nodes:
+        graph.add_edges_from((r, name) for r in _reads(excitation[name]) if r in excitation)
+    rank = {n: i for i, n in enumerate(nodes)}
+    found = [
+        sorted(part, key=rank.__getitem__)
+        for part in nx.strongly_connected_components(graph)
+        if len(part) > 1 or graph.has_edge(*(2 * tuple(part)))
+    ]
+    return sorted(found, key=lambda part: rank[part[0]])
+
+
+def _reads(e: Expr) -> list[str]:
+    return [leaf.name for leaf in topological([e]) if leaf.op == "var"]
