@@ -97,7 +97,7 @@ def definition_order(defined: Mapping[str, Expr]) -> list[str]:
     for name, body in defined.items():
         graph.add_edges_from((r, name) for r in _reads(body) if r in defined)
     try:
-        return list(nx.lexicographical_topological_sort(graph, key=list(defined).index))
+        return list(nx.topological_sort(graph))
     except nx.NetworkXUnfeasible:
         cycle = [edge[0] for edge in nx.find_cycle(graph)]
         raise ValueError(" -> ".join([*cycle, cycle[0]])) from None

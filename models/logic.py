@@ -150,24 +150,40 @@ def combine(e: Expr, v: list[Any], one: Any) -> Any:
     return total
 
 
+class Program:
+    """Expressions made ready for evaluation again and again. `reads`: the signals that need a value."""
+
+    def __init__(self, roots: Sequence[Expr]) -> None:
+        order = list(topological(roots))
+        place = {e: i for i, e in enumerate(order)}
+        for e in order:
+            if e.op in ("stable", "excited"):
+                raise ValueError(f"`{to_text(e)}` must be resolved against a circuit first")
+        self._lines = [(e, [place[a] for a in e.args]) for e in order]
+        self._roots = [place[r] for r in roots]
+        self.reads = [e.name for e in order if e.op == "var"]
+
+    def run(self, values: Mapping[str, Any], one: Any = 1) -> list[Any]:
+        """The roots' values; see `evaluate`."""
+        zero = one ^ one
+        done: list[Any] = []
+        for e, args in self._lines:
+            if e.op == "var":
+                done.append(values[e.name])
+            elif e.op == "const":
+                done.append(one if e is TRUE else zero)
+            else:
+                done.append(combine(e, [done[a] for a in args], one))
+        return [done[r] for r in self._roots]
+
+
 def evaluate(roots: Sequence[Expr], values: Mapping[str, Any], one: Any = 1) -> list[Any]:
     """Values of `roots` under `values`, bit-parallel: words may be 0/1, long integers or numpy arrays.
 
     `one` is the word with every bit set that is in use. Raises `KeyError` for a signal without a value;
     `stable` and `excited` must have been resolved.
     """
-    zero = one ^ one
-
-    def visit(e: Expr, v: list[Any]) -> Any:
-        if e.op == "var":
-            return values[e.name]
-        if e.op == "const":
-            return one if e is TRUE else zero
-        if e.op in ("stable", "excited"):
-            raise ValueError(f"`{to_text(e)}` must be resolved against a circuit first")
-        return combine(e, v, one)
-
-    return fold(roots, visit)
+    return Program(roots).run(values, one)
 
 
 def rebuild(e: Expr, args: list[Expr]) -> Expr:

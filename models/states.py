@@ -1,0 +1,208 @@
+"""Total states, steps and runs: the executable meaning of a circuit in its environment.
+
+This is the meaning that every counterexample is walked through again, written for reading and not for speed: one
+state at a time, no solver and no formula shared with the engines. Models: the general multiple winner (`any`) and
+general single winner (`one`) models of Brzozowski and Seger, "Asynchronous Circuits", 1995 (recalled).
+
+A total state is packed into an integer: bit `circuit.place[s]` is the value of signal `s`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import dataclass
+from functools import cached_property, lru_cache
+from typing import NamedTuple
+
+from settled.models.circuit import Circuit
+from settled.models.environment import Environment
+from settled.models.logic import Expr, evaluate
+
+
+class Situation(NamedTuple):
+    """A total state and, in burst mode, the inputs that have yet to change (both packed)."""
+
+    state: int
+    outstanding: int = 0
+
+
+@dataclass(frozen=True)
+class Run:
+    """A sequence of total states; with `loop`, the last state moves to the state at that index, for ever."""
+
+    title: str
+    states: tuple[int, ...]
+    loop: int | None = None
+    circuit: str = ""
+
+
+def pack(circuit: Circuit, values: Mapping[str, int]) -> int:
+    """The packed total state with the given value of every input and node."""
+    return sum(1 << i for i, s in enumerate(circuit.signals) if values[s])
+
+
+def unpack(circuit: Circuit, state: int) -> dict[str, int]:
+    """Value of every input and node in a packed total state."""
+    return {s: state >> i & 1 for i, s in enumerate(circuit.signals)}
+
+
+def value(circuit: Circuit, expressions: Iterable[Expr], state: int) -> list[int]:
+    """Values of expressions (definitions, `stable` and `excited` allowed) in a total state."""
+    return evaluate(circuit.resolve(*expressions), unpack(circuit, state))
+
+
+def excited(circuit: Circuit, state: int) -> int:
+    """The packed set of nodes whose excitation differs from their value."""
+    values = unpack(circuit, state)
+    targets = evaluate(list(circuit.excitation.values()), values)
+    return sum(1 << circuit.place[n] for n, t in zip(circuit.excitation, targets, strict=True) if t != values[n])
+
+
+def subsets(mask: int) -> Iterator[int]:
+    """The non-empty subsets of a packed set, in increasing order."""
+    part = 0
+    while (part := (part - mask) & mask) != 0:
+        yield part
+
+
+def members(mask: int) -> Iterator[int]:
+    """The single members of a packed set, as packed sets."""
+    while mask:
+        yield mask & -mask
+        mask &= mask - 1
+
+
+def choices(mask: int, winners: str) -> Iterator[int]:
+    """What may switch in one step when the members of `mask` may: any non-empty part, or exactly one."""
+    return subsets(mask) if winners == "any" else members(mask)
+
+
+def successors(circuit: Circuit, state: int) -> Iterator[int]:
+    """The total states that one step reaches while the inputs are held: each node holds or follows."""
+    for switching in choices(excited(circuit, state), circuit.winners):
+        yield state ^ switching
+
+
+class Behaviour:
+    """A circuit in its environment: where runs begin and what one step may do."""
+
+    def __init__(self, circuit: Circuit, environment: Environment) -> None:
+        self.circuit, self.environment = circuit, environment
+        self.excited = lru_cache(maxsize=100_000)(lambda state: excited(circuit, state))
+        self.admits = lru_cache(maxsize=100_000)(self._admits)
+
+    @cached_property
+    def _assume(self) -> list[Expr]:
+        return self.circuit.resolve(*self.environment.assume)
+
+    @cached_property
+    def _guards(self) -> list[tuple[int, Expr, Expr]]:
+        found = []
+        for i, name in enumerate(self.circuit.inputs):
+            guard = self.environment.guard(name)
+            found.append((1 << i, *self.circuit.resolve(guard.rises, guard.falls)))
+        return found
+
+    def _admits(self, vector: int) -> bool:
+        return all(evaluate(self._assume, unpack(self.circuit, vector)))
+
+    def is_stable(self, state: int) -> bool:
+        """Whether no node is excited."""
+        return self.excited(state) == 0
+
+    def may_start(self, state: int) -> bool:
+        """Whether runs may begin in `state`."""
+        wanted = self.environment.start
+        present = value(self.circuit, [self.circuit.signal(s) for s in wanted], state)
+        fits = present == [int(v) for v in wanted.values()] and self.admits(state & self.circuit.input_mask)
+        return fits and (self.environment.mode == "input-output" or self.is_stable(state))
+
+    def allowed(self, state: int) -> int:
+        """The packed set of inputs whose guard lets them change in `state`."""
+        values = unpack(self.circuit, state)
+        mask = 0
+        for bit, rises, falls in self._guards:
+            if evaluate([falls if state & bit else rises], values)[0]:
+                mask |= bit
+        return mask
+
+    def finishes(self, vector: int, outstanding: int) -> bool:
+        """Whether the outstanding inputs can change one after the other with every vector admitted."""
+        if not outstanding:
+            return True
+        return any(
+            self.admits(vector ^ bit) and self.finishes(vector ^ bit, outstanding ^ bit) for bit in members(outstanding)
+        )
+
+    def arrivals(self, at: Situation) -> Iterator[tuple[int, int]]:
+        """Outstanding inputs that may change next, each with what is then outstanding."""
+        vector = at.state & self.circuit.input_mask
+        for bit in members(at.outstanding):
+            if self.admits(vector ^ bit) and self.finishes(vector ^ bit, at.outstanding ^ bit):
+                yield bit, at.outstanding ^ bit
+
+    def changes(self, at: Situation) -> Iterator[Situation]:
+        """What the environment may do of its own accord in a stable total state in fundamental mode."""
+        if self.environment.mode != "fundamental" or at.outstanding or not self.is_stable(at.state):
+            return
+        how = self.environment.changes
+        vector = at.state & self.circuit.input_mask
+        for chosen in choices(self.allowed(at.state), "one" if how == "single" else "any"):
+            if how != "burst":
+                if self.admits(vector ^ chosen):
+                    yield Situation(at.state ^ chosen)
+            else:
+                for bit, rest in self.arrivals(Situation(at.state, chosen)):
+                    yield Situation(at.state ^ bit, rest)
+
+    def held(self, at: Situation) -> Iterator[Situation]:
+        """Steps of the nodes alone."""
+        for switching in choices(self.excited(at.state), self.circuit.winners):
+            yield Situation(at.state ^ switching, at.outstanding)
+
+    def responses(self, at: Situation) -> Iterator[Situation]:
+        """Steps of the response to a change: of the nodes, and arrivals that are outstanding."""
+        yield from self.held(at)
+        switching = self.excited(at.state)
+        for bit, rest in self.arrivals(at):
+            yield Situation(at.state ^ bit, rest)
+            if self.circuit.winners == "any":
+                for part in subsets(switching):
+                    yield Situation(at.state ^ bit ^ part, rest)
+
+    def free(self, at: Situation) -> Iterator[Situation]:
+        """Steps in input-output mode: nodes and inputs alike."""
+        moving = self.excited(at.state) | self.allowed(at.state)
+        for switching in choices(moving, self.circuit.winners):
+            if self.admits((at.state ^ switching) & self.circuit.input_mask):
+                yield Situation(at.state ^ switching)
+
+    def moves(self, at: Situation) -> Iterator[Situation]:
+        """Every situation that one step reaches."""
+        if self.environment.mode == "input-output":
+            yield from self.free(at)
+        else:
+            yield from self.responses(at)
+            yield from self.changes(at)
+
+
+def walk(behaviour: Behaviour, run: Run, anywhere: bool = False) -> list[set[Situation]]:
+    """Walk a run: for each of its states the situations it can be in. Raises `ValueError` where it is no run.
+
+    `anywhere` drops the demand that the run begins in a start state.
+    """
+    first = run.states[0]
+    if not anywhere and not behaviour.may_start(first):
+        raise ValueError("the run does not begin in a start state")
+    now = {Situation(first)}
+    seen = [now]
+    for i, state in enumerate(run.states[1:], 1):
+        now = {after for at in now for after in behaviour.moves(at) if after.state == state}
+        if not now:
+            raise ValueError(f"no lawful move leads to step {i} of the run")
+        seen.append(now)
+    if run.loop is not None and not any(
+        after.state == run.states[run.loop] for at in now for after in behaviour.moves(at)
+    ):
+        raise ValueError("no lawful move closes the loop of the run")
+    return seen
