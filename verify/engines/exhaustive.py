@@ -1,0 +1,205 @@
+"""The exhaustive engine: explores every reachable total state, layer by layer, and reads the answer off the graph.
+
+Nothing beats it on small circuits. A limit that ends the search early leaves refutations among the states that were
+reached (they are reachable all the same) and `undecided` otherwise.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+
+from settled.encodings.packed import Packed, TooWide
+from settled.models.logic import and_
+from settled.models.states import Behaviour, Run, Situation
+from settled.verify.engines import Engine
+from settled.verify.explicit.changes_thrice import ThreeChanges
+from settled.verify.explicit.graph import NONE, Graph
+from settled.verify.explicit.hazards import Watch, flickering, shortest_flicker
+from settled.verify.explicit.oscillations import shortest_lasso
+from settled.verify.explicit.races import all_ends, run_to, nearest_ends, shortest_race
+from settled.verify.limits import LimitReached
+from settled.verify.questions import (
+    Answer,
+    Diverges,
+    DivergesAfterThree,
+    Flickers,
+    Oscillates,
+    Question,
+    Reaches,
+    Task,
+    undecided,
+)
+
+NAME = "exhaustive search"
+SAMPLE = 2_000
+
+
+def explored(task: Task) -> Graph:
+    """The graph of the task, explored once. Raises `LimitReached` when the circuit does not fit at all."""
+    if "graph" not in task.memory:
+        try:
+            graph = Graph(Packed(task.circuit, task.environment), task.limits)
+        except TooWide as wide:
+            raise LimitReached(str(wide)) from None
+        if graph.unfinished is None:
+            audit(graph, task)
+        task.memory["graph"] = graph
+    graph = task.memory["graph"]
+    graph.limits = task.limits
+    return graph
+
+
+class AuditFailed(Exception):
+    """The explored graph disagrees with the executable meaning: a fault in this program, never a verdict."""
+
+
+def audit(graph: Graph, task: Task) -> None:
+    """Check by the executable meaning that the set of reached states is closed under moves.
+
+    All states of small graphs, an evenly spaced sample of 2,000 of large ones.
+    """
+    behaviour = Behaviour(task.circuit, task.environment)
+    low, mask = graph.packed.state_bits, int(graph.packed.state_mask)
+    stride = max(1, len(graph) // SAMPLE)
+    for word in graph.vertices[::stride].tolist():
+        if int(word & mask & ~int(graph.packed.input_mask)).bit_count() > 0 and _steps(behaviour, word & mask) > 4096:
+            continue
+        after = [s.state | s.outstanding << low for s in behaviour.moves(Situation(word & mask, word >> low))]
+        if (graph.index(np.array(after, np.uint64)) < 0).any():
+            raise AuditFailed(f"a move from total state {word:#x} leaves the explored set")
+
+
+def _steps(behaviour: Behaviour, state: int) -> int:
+    return 1 << min(30, behaviour.excited(state).bit_count())
+
+
+def ranged(graph: Graph) -> dict[str, int]:
+    """What the search covered."""
+    return {
+        "total_states": len(np.unique(graph.vertices & graph.packed.state_mask)),
+        "stable_states": int((graph.excited == 0).sum()) if not graph.packed.burst else _stable(graph),
+        "input_changes": _changes(graph),
+    }
+
+
+def _stable(graph: Graph) -> int:
+    return len(np.unique(graph.vertices[graph.excited == 0] & graph.packed.state_mask))
+
+
+def _changes(graph: Graph) -> int:
+    edges = graph.change_edges
+    if not graph.packed.burst:
+        return len(edges.source)
+    first = graph.vertices[edges.source] ^ graph.vertices[edges.target]
+    burst = (first & graph.packed.input_mask) | graph.packed.outstanding(graph.vertices[edges.target])
+    return len(np.unique(np.stack([edges.source.astype(np.uint64), burst]), axis=1).T)
+
+
+def run(graph: Graph, title: str, path: Sequence[int], loop: int | None = None) -> Run:
+    """The run through the vertices at `path`."""
+    states = (graph.vertices[np.array(path, np.int64)] & graph.packed.state_mask).tolist()
+    return Run(title, tuple(states), loop, graph.packed.circuit.name)
+
+
+def proved(graph: Graph, exercised: bool) -> Answer:
+    """The answer when nothing wrong was found: `proved`, or `undecided` when a limit ended the search."""
+    if graph.unfinished is not None:
+        return undecided(graph.unfinished, NAME)
+    return Answer("proved", NAME, ranged=ranged(graph), exercised=exercised)
+
+
+def refuted(graph: Graph, runs: Sequence[Run], facts: Mapping[str, Any] | None = None) -> Answer:
+    """The answer when something wrong was found."""
+    return Answer("refuted", NAME, runs=tuple(runs), ranged=ranged(graph), facts=facts or {})
+
+
+def reaches(task: Task, question: Reaches) -> Answer:
+    """Look for a reachable total state with `bad` true."""
+    graph = explored(task)
+    bad = graph.packed.holds([question.bad], graph.vertices)
+    stable = graph.excited == 0
+    if question.only_stable:
+        bad &= stable
+    hits = graph.earliest(np.flatnonzero(bad))
+    if len(hits):
+        return refuted(graph, [run(graph, "the run to it", graph.path_to(int(hits[0])))])
+    return proved(graph, bool(stable.any()) if question.only_stable else True)
+
+
+def oscillates(task: Task, _: Oscillates) -> Answer:
+    """Look for a sustained oscillation."""
+    graph = explored(task)
+    found = shortest_lasso(graph)
+    if found is None:
+        return proved(graph, bool(len(graph.change_edges.source) or (graph.excited != 0).any()))
+    path, loop = found
+    settles = _held_ends(graph, path[loop])
+    return refuted(graph, [run(graph, "once round the oscillation", path, loop)], {"some_run_settles": settles})
+
+
+def _held_ends(graph: Graph, vertex: int) -> bool:
+    seen, fresh = {vertex}, [vertex]
+    while fresh:
+        if (graph.excited[fresh] == 0).any():
+            return True
+        _, after = graph.held_edges.out_of(np.array(fresh))
+        fresh = sorted(set(after.tolist()) - seen)
+        seen.update(fresh)
+    return False
+
+
+def diverges(task: Task, _: Diverges) -> Answer:
+    """Look for an input change with two ends."""
+    graph = explored(task)
+    found = shortest_race(graph)
+    if found is None:
+        return proved(graph, len(graph.change_edges.source) > 0)
+    return refuted(graph, [run(graph, f"{word} ordering", path) for word, path in zip(("one", "another"), found, strict=True)])
+
+
+def flickers(task: Task, question: Flickers) -> Answer:
+    """Look for a signal that changes twice in one response."""
+    graph = explored(task)
+    watch = Watch(graph, question.signals)
+    bad = int(flickering(graph, watch))
+    if not bad:
+        return proved(graph, len(graph.change_edges.source) > 0)
+    found = shortest_flicker(graph, watch, bad)
+    assert found is not None, "a signal that flickers has a shortest run that shows it"
+    path, signal = found
+    ends = nearest_ends(graph)
+    settled = int(ends.end[path[-1], 0])
+    rest = run_to(graph, ends, path[-1], settled)[1:] if settled >= 0 else []
+    shown = run(graph, "the run through the hazard", path + rest)
+    return refuted(graph, [shown], {"signal": signal, "offending_step": len(path) - 1, "settles": settled >= 0})
+
+
+def diverges_after_three(task: Task, _: DivergesAfterThree) -> Answer:
+    """Look for an essential hazard."""
+    graph = explored(task)
+    three = ThreeChanges(graph)
+    found = three.shortest()
+    if found is None:
+        return proved(graph, bool(three.after))
+    first, second, bit = found
+    changes = [int(graph.end[v]) for v in second]
+    titles = ("after one change", "after three changes" if sum(changes) - sum(int(graph.end[v]) for v in first) else "another ordering after one change")
+    runs = [run(graph, title, path) for title, path in zip(titles, (first, second), strict=True)]
+    return refuted(graph, runs, {"input": task.circuit.inputs[bit.bit_length() - 1]})
+
+
+ENGINE = Engine(
+    NAME,
+    rank=10,
+    answers={
+        Reaches: reaches,
+        Oscillates: oscillates,
+        Diverges: diverges,
+        Flickers: flickers,
+        DivergesAfterThree: diverges_after_three,
+    },
+)
+

@@ -1,0 +1,365 @@
+"""The graph of reachable total states, explored layer by layer, and what is read off it.
+
+Layers are ordered by (changes made by the environment, steps): the first vertex found that satisfies a condition
+has a run to it with the fewest changes and, among those, the fewest steps.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, field
+from functools import cached_property
+from heapq import heappop, heappush
+
+import numpy as np
+import numpy.typing as npt
+
+from settled.encodings.packed import Bits, Packed, Places, Words
+from settled.verify.limits import LimitReached, Limits
+
+Key = tuple[int, int]
+Moves = Callable[[Words], tuple[Places, Words]]
+
+BLOCK = 1 << 21
+NONE, MANY = -1, -2
+
+
+def blocks(vertices: Words, movers: Words, limits: Limits, winners: str = "any") -> Iterator[slice]:
+    """Slices of `vertices` small enough that all steps of a slice fit into memory."""
+    count = np.bitwise_count(movers).astype(np.float64)
+    rows = np.exp2(count) if winners == "any" else count
+    if len(rows) and rows.max() > 4 * BLOCK:
+        limits.refuse(f"{int(count.max())} signals can switch in one step, in more combinations than fit into memory")
+    start, total = 0, np.cumsum(rows)
+    while start < len(rows):
+        base = total[start - 1] if start else 0.0
+        stop = max(start + 1, int(np.searchsorted(total, base + BLOCK, side="right")))
+        yield slice(start, stop)
+        start = stop
+
+
+class Known:
+    """A growing set of words: a table of flags where that fits, else sorted runs that are merged as they grow."""
+
+    def __init__(self, bits: int) -> None:
+        self._table = np.zeros(1 << bits, bool) if bits <= 24 else None
+        self._runs: list[Words] = []
+
+    def missing(self, words: Words) -> Words:
+        """Those of `words` (sorted, distinct) that are not in the set."""
+        if self._table is not None:
+            return words[~self._table[words.astype(np.int64)]]
+        for run in self._runs:
+            at = np.searchsorted(run, words)
+            at[at == len(run)] = 0
+            words = words[run[at] != words]
+        return words
+
+    def add(self, words: Words) -> None:
+        """Put in words (sorted, distinct) that are missing."""
+        if self._table is not None:
+            self._table[words.astype(np.int64)] = True
+            return
+        self._runs.append(words)
+        while len(self._runs) > 1 and len(self._runs[-1]) * 2 > len(self._runs[-2]):
+            last = self._runs.pop()
+            self._runs[-1] = np.sort(np.concatenate([self._runs[-1], last]))
+
+
+@dataclass
+class Search:
+    """A layered search. `steps` stay in a round; `changes` begin the next one; `flagged` ends the search.
+
+    After `run`, `layers` holds the vertices by key (round, steps) and `hit` the least flagged vertex of the first
+    layer that has one, with its key, or None.
+    """
+
+    bits: int
+    steps: Moves
+    changes: Moves | None
+    limits: Limits
+    flagged: Callable[[Words], Bits] | None = None
+    layers: dict[Key, Words] = field(default_factory=dict)
+    hit: tuple[Key, int] | None = None
+    size: int = 0
+
+    def run(self, sources: dict[Key, Words]) -> Search:
+        """Explore from `sources`, vertices by the key that they have already reached."""
+        known = Known(self.bits)
+        waiting: dict[Key, list[Words]] = {key: [words] for key, words in sources.items()}
+        queue = sorted(waiting)
+        while queue:
+            key = heappop(queue)
+            fresh = known.missing(np.unique(np.concatenate(waiting.pop(key))))
+            if not len(fresh):
+                continue
+            known.add(fresh)
+            self.layers[key] = fresh
+            self.size += len(fresh)
+            self.limits.tick(self.size, key[0])
+            if self.flagged is not None and (bad := fresh[self.flagged(fresh)]).size:
+                self.hit = (key, int(bad[0]))
+                return self
+            for after, moves in (((key[0], key[1] + 1), self.steps), ((key[0] + 1, key[1] + 1), self.changes)):
+                if moves is not None and len(found := moves(fresh)[1]):
+                    if after not in waiting:
+                        heappush(queue, after)
+                        waiting[after] = []
+                    waiting[after].append(np.unique(found))
+        return self
+
+    def path(self, key: Key, target: int) -> list[tuple[Key, int]]:
+        """The vertices from a source to `target` in layer `key`, the least predecessor chosen at each step."""
+        back = [(key, target)]
+        while (found := self._before(*back[-1])) is not None:
+            back.append(found)
+        return back[::-1]
+
+    def _before(self, key: Key, target: int) -> tuple[Key, int] | None:
+        rounds, steps = key
+        for before, moves in (((rounds, steps - 1), self.steps), ((rounds - 1, steps - 1), self.changes)):
+            layer = self.layers.get(before)
+            if layer is None or moves is None:
+                continue
+            source, reached = moves(layer)
+            hits = source[reached == np.uint64(target)]
+            if len(hits):
+                return before, int(layer[hits.min()])
+        return None
+
+
+class Graph:
+    """All reachable vertices of a circuit in its environment (see `Packed` for what a vertex is).
+
+    `vertices` is sorted; `excited`, `key` (round, steps) and `end` (stable, nothing outstanding) run beside it.
+    When a limit ended the search, `unfinished` says which; the vertices found are reachable all the same, so that
+    whatever is found wrong among them is wrong.
+    """
+
+    def __init__(self, packed: Packed, limits: Limits) -> None:
+        self.packed, self.limits = packed, limits
+        self.search = Search(packed.bits, self.steps, self.changes, limits)
+        self.unfinished: str | None = None
+        try:
+            self.search.run({(0, 0): starts(packed, limits)})
+        except LimitReached as reached:
+            self.unfinished = str(reached)
+        keys = list(self.search.layers)
+        joined = np.concatenate([*self.search.layers.values(), np.zeros(0, np.uint64)])
+        order = np.argsort(joined)
+        self.vertices: Words = joined[order]
+        layer = np.repeat(np.arange(len(keys)), [len(w) for w in self.search.layers.values()])[order]
+        self.keys, self.layer = keys, layer
+        self.excited: Words = packed.excited(self.vertices)
+        self.end: Bits = packed.ends(self.vertices, self.excited)
+
+    def __len__(self) -> int:
+        return len(self.vertices)
+
+    def key(self, index: int) -> Key:
+        """(changes, steps) of the shortest run to a vertex."""
+        return self.keys[int(self.layer[index])]
+
+    def earliest(self, indices: Places) -> Places:
+        """`indices` ordered by the length of the shortest run to them, then by value."""
+        return indices[np.lexsort((indices, self.layer[indices]))]
+
+    def lengths(self, indices: Places) -> tuple[Places, Places]:
+        """Changes and steps of the shortest run to each vertex."""
+        table = np.array(self.keys, np.int64)[self.layer[indices]]
+        return table[:, 0], table[:, 1]
+
+    def path_to(self, index: int) -> list[int]:
+        """A shortest run from a start state to a vertex, as indices."""
+        words = [v for _, v in self.search.path(self.key(index), int(self.vertices[index]))]
+        return self.index(np.array(words, np.uint64)).tolist()
+
+    def index(self, words: Words) -> Places:
+        """Positions of words in `vertices`; -1 for those that were not reached."""
+        place = np.searchsorted(self.vertices, words)
+        place[place == len(self)] = 0
+        return np.where(self.vertices[place] == words, place, -1) if len(self) else place - 1
+
+    def steps(self, vertices: Words) -> tuple[Places, Words]:
+        """Steps of the response (in input-output mode: every step)."""
+        movers = self.packed.excited(vertices)
+        return self._blockwise(lambda v, m: self.packed.steps(v, m), vertices, movers)
+
+    def held(self, vertices: Words) -> tuple[Places, Words]:
+        """Steps of the nodes alone, the inputs held."""
+        return self._blockwise(self.packed.held, vertices, self.packed.excited(vertices))
+
+    def changes(self, vertices: Words) -> tuple[Places, Words]:
+        """Changes that the environment may make in the vertices among `vertices` that admit one."""
+        place = np.flatnonzero(self.packed.ends(vertices, self.packed.excited(vertices)))
+        stable = vertices[place]
+        source, target = self._blockwise(lambda v, _: self.packed.changes(v), stable, self.packed.allowed(stable))
+        return place[source], target
+
+    def _blockwise(
+        self, moves: Callable[[Words, Words], tuple[Places, Words]], vertices: Words, movers: Words
+    ) -> tuple[Places, Words]:
+        sources, targets = [np.zeros(0, np.int64)], [np.zeros(0, np.uint64)]
+        for part in blocks(vertices, movers, self.limits, self.packed.circuit.winners):
+            source, target = moves(vertices[part], movers[part])
+            sources.append(source + part.start)
+            targets.append(target)
+        return np.concatenate(sources), np.concatenate(targets)
+
+    @cached_property
+    def step_edges(self) -> Edges:
+        """Edges of the responses."""
+        return self._edges(self.steps)
+
+    @cached_property
+    def held_edges(self) -> Edges:
+        """Edges of the nodes alone."""
+        return self.step_edges if self.packed.fundamental and not self.packed.burst else self._edges(self.held)
+
+    @cached_property
+    def change_edges(self) -> Edges:
+        """Edges from stable vertices to what a change of the environment makes of them."""
+        return self._edges(self.changes)
+
+    def _edges(self, moves: Moves) -> Edges:
+        sources, targets = [np.zeros(0, np.int64)], [np.zeros(0, np.int64)]
+        for start in range(0, len(self.vertices), 1 << 16):
+            self.limits.tick(len(self), self.keys[-1][0])
+            source, target = moves(self.vertices[start : start + (1 << 16)])
+            place = self.index(target)
+            sources.append(source[place >= 0] + start)
+            targets.append(place[place >= 0])
+        return Edges(len(self), np.concatenate(sources), np.concatenate(targets))
+
+    @cached_property
+    def outcome(self) -> npt.NDArray[np.int64]:
+        """For each vertex the index of the one end that its response can reach, `NONE` or `MANY`."""
+        low = np.full(len(self), len(self), np.int64)
+        high = np.full(len(self), -1, np.int64)
+        fresh = np.flatnonzero(self.end)
+        low[fresh] = high[fresh] = fresh
+        while len(fresh):
+            before, after = self.step_edges.into(fresh)
+            touched = np.unique(before)
+            old_low, old_high = low[touched], high[touched]
+            np.minimum.at(low, before, low[after])
+            np.maximum.at(high, before, high[after])
+            several = touched[low[touched] < high[touched]]
+            low[several], high[several] = -1, len(self)
+            fresh = touched[(low[touched] != old_low) | (high[touched] != old_high)]
+        return np.where(high < 0, NONE, np.where(low < 0, MANY, low))
+
+    @cached_property
+    def cores(self) -> list[Places]:
+        """The sustained oscillations: strongly connected sets that a fair run can go round with the inputs held."""
+        return fair_components(self.held_edges, self.vertices, self.excited)
+
+
+class Edges:
+    """Edges between vertices 0 to size - 1, looked up from either side."""
+
+    def __init__(self, size: int, source: Places, target: Places) -> None:
+        self.size = size
+        self.source, self.target = source, target
+
+    @cached_property
+    def _by_target(self) -> tuple[Places, Places]:
+        order = np.argsort(self.target, kind="stable")
+        return self.source[order], np.searchsorted(self.target[order], np.arange(self.size + 1))
+
+    @cached_property
+    def _by_source(self) -> tuple[Places, Places]:
+        order = np.argsort(self.source, kind="stable")
+        return self.target[order], np.searchsorted(self.source[order], np.arange(self.size + 1))
+
+    def into(self, targets: Places) -> tuple[Places, Places]:
+        """All edges into `targets`: (source, target) of each."""
+        other, first = self._by_target
+        place, owner = _ranges(first, targets)
+        return other[place], owner
+
+    def out_of(self, sources: Places) -> tuple[Places, Places]:
+        """All edges out of `sources`: (source, target) of each."""
+        other, first = self._by_source
+        place, owner = _ranges(first, sources)
+        return owner, other[place]
+
+
+def _ranges(first: Places, rows: Places) -> tuple[Places, Places]:
+    """Positions first[r] to first[r + 1] - 1 of every row in one array, and the row that each belongs to."""
+    count = first[rows + 1] - first[rows]
+    skip = np.repeat(np.cumsum(count) - count, count)
+    return np.repeat(first[rows], count) + np.arange(len(skip)) - skip, np.repeat(rows, count)
+
+
+def starts(packed: Packed, limits: Limits) -> Words:
+    """All start states, by trial where `start` leaves few signals open, else by SAT."""
+    circuit, environment = packed.circuit, packed.environment
+    fixed = sum(1 << circuit.place[s] for s in environment.start if s in circuit.place)
+    value = sum(1 << circuit.place[s] for s, v in environment.start.items() if s in circuit.place and v)
+    free = [i for i in range(packed.state_bits) if not fixed >> i & 1]
+    if len(free) > 16:
+        return _starts_by_sat(packed, limits)
+    words = np.full(1, value, np.uint64)
+    for i in free:
+        words = np.concatenate([words, words | np.uint64(1 << i)])
+    return np.sort(words[_may_start(packed, words)])
+
+
+def _may_start(packed: Packed, words: Words) -> Bits:
+    circuit, environment = packed.circuit, packed.environment
+    good = packed.admits(words)
+    for name, wanted in environment.start.items():
+        good &= packed.holds([circuit.signal(name)], words) == bool(wanted)
+    return good & (packed.excited(words) == 0) if packed.fundamental else good
+
+
+def _starts_by_sat(packed: Packed, limits: Limits) -> Words:
+    from settled.verify.stable_states import start_states
+
+    found = []
+    for state in start_states(packed.circuit, packed.environment):
+        found.append(state)
+        limits.tick(len(found), 0)
+    return np.array(sorted(found), np.uint64)
+
+
+def fair_components(edges: Edges, vertices: Words, excited: Words) -> list[Places]:
+    """The strongly connected sets with an edge inside in which no node is excited with one value throughout."""
+    left = _with_successors(edges)
+    if not len(left):
+        return []
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
+    place = np.full(edges.size, -1, np.int64)
+    place[left] = np.arange(len(left))
+    source, target = place[edges.source], place[edges.target]
+    inside = (source >= 0) & (target >= 0)
+    shape = (len(left), len(left))
+    matrix = coo_array((np.ones(int(inside.sum()), np.int8), (source[inside], target[inside])), shape=shape)
+    _, label = connected_components(matrix, directed=True, connection="strong")
+    order = np.argsort(label, kind="stable")
+    parts = np.split(left[order], np.flatnonzero(np.diff(label[order])) + 1)
+    found = [part for part in parts if len(part) > 1 and not stuck(vertices[part], excited[part])]
+    return sorted(found, key=lambda part: int(part[0]))
+
+
+def stuck(vertices: Words, excited: Words) -> int:
+    """Whether some node is excited with the same value in all of these states (0 if none is)."""
+    high = np.bitwise_and.reduce(excited & vertices)
+    low = np.bitwise_and.reduce(excited & ~vertices)
+    return int(high | low)
+
+
+def _with_successors(edges: Edges) -> Places:
+    """What is left when vertices without successors are taken away again and again."""
+    degree = np.bincount(edges.source, minlength=edges.size)
+    fresh = np.flatnonzero(degree == 0)
+    while len(fresh):
+        before, _ = edges.into(fresh)
+        np.subtract.at(degree, before, 1)
+        touched = np.unique(before)
+        fresh = touched[degree[touched] == 0]
+    return np.flatnonzero(degree > 0)
