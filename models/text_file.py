@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import errno
 import os
+import stat
 from pathlib import Path
 
 from settled.models.problems import InputError, Problem, nearest
@@ -24,6 +26,17 @@ def read_text(path: str | Path, *, limit: int, named_at: Span | None = None) -> 
         message = f"`{path}` is larger than the limit of {limit // 10**6} MB for such a file"
         raise InputError(Problem("too-large", message, span))
     return decode(raw, str(path))
+
+
+def check_file(path: Path, named_at: Span) -> None:
+    """Raise `InputError` when `path` is no file that can be opened."""
+    try:
+        if stat.S_ISDIR(path.stat().st_mode):
+            raise IsADirectoryError(errno.EISDIR, "")
+        if not os.access(path, os.R_OK):
+            raise PermissionError(errno.EACCES, "")
+    except (OSError, ValueError) as error:
+        raise InputError(_unreadable(path, error, named_at)) from None
 
 
 def decode(raw: bytes, file: str) -> str:

@@ -1,0 +1,196 @@
+"""A TOML file as data in which every key and value has a place, and problems can be noted until all are known."""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from bisect import bisect_right
+from collections.abc import Callable, Collection, Iterator
+from dataclasses import dataclass, field
+from functools import cached_property
+from itertools import accumulate
+from typing import Any, TypeVar
+
+from settled.models.problems import InputError, Problem, nearest
+from settled.models.source import Span
+from settled.models.toml_positions import LEVELS, Path, Place, Positions, Stretch, scan, string_offsets
+
+T = TypeVar("T")
+
+SIZE_LIMIT = 4 * 10**6
+"""Bytes of a property file that are read; a larger circuit belongs in a netlist file."""
+
+_WHERE = re.compile(r"(.*) \(at (?:line (\d+), column (\d+)|end of document)\)\Z", re.DOTALL)
+_KINDS = {str: "a string", bool: "a boolean", int: "an integer", float: "a float", list: "an array", dict: "a table"}
+_QUOTES_HELP = (
+    'in a string in double quotes a backslash is written `\\\\`; in single quotes it stands for itself: \'\\bus+1 \''
+)
+
+
+@dataclass
+class Document:
+    """A property file: its text, its data, where everything stands, and the problems found so far."""
+
+    file: str
+    text: str
+    data: dict[str, Any] = field(default_factory=dict)
+    problems: list[Problem] = field(default_factory=list)
+
+    @cached_property
+    def positions(self) -> Positions:
+        return scan(self.text)
+
+    @cached_property
+    def line_starts(self) -> list[int]:
+        return [0, *accumulate(len(line) + 1 for line in self.text.split("\n"))]
+
+    @property
+    def root(self) -> Spot:
+        return Spot(self, (), self.data)
+
+    def span(self, start: int, end: int) -> Span:
+        """The span of `text[start:end]`, cut at the end of its first line."""
+        line = bisect_right(self.line_starts, start, hi=len(self.line_starts) - 1)
+        first = self.line_starts[line - 1]
+        length = min(end, self.line_starts[line] - 1) - start
+        return Span(self.file, line, start - first + 1, max(1, length))
+
+    def finish(self) -> None:
+        """Raise all problems noted, in the order of the file, those of other files last."""
+        if not self.problems:
+            return
+
+        def order(problem: Problem) -> tuple[bool, str, int, int]:
+            at = problem.span or Span(self.file, 1, 1)
+            return at.file != self.file, at.file, at.line, at.column
+
+        raise InputError(sorted(dict.fromkeys(self.problems), key=order))
+
+
+def load(file: str, text: str) -> Document:
+    """The document of a TOML text. Raises `InputError` for what is not TOML."""
+    text = text.replace("\r\n", "\n")
+    document = Document(file, text)
+    if not text.strip():
+        raise InputError(Problem("empty-file", f"`{file}` is empty", Span(file, 1, 1)))
+    if document.positions.too_deep is not None:
+        at = document.positions.too_deep
+        message = f"keys, arrays and tables nest deeper than {LEVELS} levels"
+        raise InputError(Problem("too-deep", message, document.span(at, at + 1), f"level {LEVELS + 1}"))
+    try:
+        document.data = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(_syntax_problems(document, str(error))) from None
+    except (ValueError, RecursionError):
+        raise InputError(_long_numbers(document)) from None
+    return document
+
+
+def _syntax_problems(document: Document, error: str) -> list[Problem]:
+    if document.positions.repeated and re.match(r"Cannot|Duplicate", error):
+        return [_repeated(document, *pair) for pair in document.positions.repeated]
+    match = _WHERE.match(error)
+    what, line, column = match.groups() if match else (error, None, None)
+    at = len(document.text.rstrip("\n")) if line is None else document.line_starts[int(line) - 1] + int(column) - 1
+    help = _QUOTES_HELP if "\\" in what else ""
+    message = f"not TOML: {what[:1].lower()}{what[1:]}" + (", found the end of the file" if line is None else "")
+    return [Problem("toml-syntax", message, document.span(at, at + 1), "TOML cannot be read on from here", help=help)]
+
+
+def _repeated(document: Document, first: Place, second: Place) -> Problem:
+    name = document.text[slice(*second.key)]
+    note = f"the first one stands at {where(document.span(*first.key))}"
+    return Problem("duplicate-key", f"`{name}` is given twice", document.span(*second.key), "the second one", (note,))
+
+
+def _long_numbers(document: Document) -> list[Problem]:
+    places = [place.value for place in document.positions.places.values()]
+    long = [at for at in places if re.match(r"[+-]?[0-9_]{1000}", document.text[slice(*at)])]
+    start, end = long[0] if long else (0, 1)
+    return [Problem("bad-value", "a number is too large", document.span(start, end), "too many digits")]
+
+
+@dataclass(frozen=True)
+class Spot:
+    """One value of a document."""
+
+    document: Document
+    path: Path
+    value: Any
+
+    @property
+    def name(self) -> str:
+        """The last key on the way here, for messages."""
+        keys = [part for part in self.path if isinstance(part, str)]
+        return keys[-1] if keys else self.document.file
+
+    @property
+    def place(self) -> Place:
+        """Where the key and the value stand; those of the nearest table around when the file does not say."""
+        places, path = self.document.positions.places, self.path
+        while path and path not in places:
+            path = path[:-1]
+        return places.get(path, Place((0, 1), (0, 1)))
+
+    @property
+    def span(self) -> Span:
+        return self.document.span(*self.place.value)
+
+    @property
+    def key_span(self) -> Span:
+        return self.document.span(*self.place.key)
+
+    def inside(self, start: int, end: int) -> Span:
+        """The span of `value[start:end]` of a string value, through quotes and escapes."""
+        first, last = self.place.value
+        offsets = string_offsets(self.document.text[first:last])
+        pick = [first + offsets[min(i, len(offsets) - 1)] for i in (start, end)]
+        return self.document.span(*pick)
+
+    def child(self, key: str | int) -> Spot:
+        return Spot(self.document, (*self.path, key), self.value[key])
+
+    def members(self) -> Iterator[Spot]:
+        """The members of an array or a table."""
+        keys: Collection[str | int] = self.value if isinstance(self.value, dict) else range(len(self.value))
+        return (self.child(key) for key in keys)
+
+    def problem(
+        self, code: str, message: str, spot: str = "", *, span: Span | None = None, note: str = "", help: str = ""
+    ) -> None:
+        """Note a problem with this value (or at `span`)."""
+        notes = (note,) if note else ()
+        self.document.problems.append(Problem(code, message, span or self.span, spot, notes, help))
+
+    def wrong_type(self, wanted: str, help: str = "") -> None:
+        kind = _KINDS.get(type(self.value), "a date or time")
+        self.problem("wrong-type", f"expected {wanted} for `{self.name}`, found {kind}", kind, help=help)
+
+    def has(self, key: str) -> bool:
+        return key in self.value
+
+    def take(self, key: str, reader: Callable[[Spot], T]) -> T | None:
+        """What `reader` makes of the member `key`; `None` when there is none."""
+        return reader(self.child(key)) if key in self.value else None
+
+    def only(self, known: Collection[str], of: str) -> None:
+        """Note every key that is not among `known` ones; `of` says of what."""
+        for member in self.members():
+            if member.name not in known:
+                help = nearest(member.name, known) or f"the keys are {listed(known)}"
+                message = f"unknown key `{member.name}` in {of}"
+                member.problem("unknown-key", message, "not a key here", span=member.key_span, help=help)
+
+    def missing(self, key: str, of: str, help: str = "") -> None:
+        self.problem("missing-key", f"{of} needs `{key}`", f"no `{key}` here", help=help)
+
+
+def where(span: Span) -> str:
+    """A place of the same file, for a note."""
+    return f"line {span.line}, column {span.column}"
+
+
+def listed(names: Collection[str]) -> str:
+    """`a`, `b` and `c`."""
+    quoted = [f"`{name}`" for name in names]
+    return " and ".join([", ".join(quoted[:-1]), quoted[-1]] if len(quoted) > 1 else quoted)
