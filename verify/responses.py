@@ -1,0 +1,63 @@
+"""Runs seen as responses: pieces of a run between one stable total state and the next, by the executable meaning."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+
+from settled.models.circuit import Circuit
+from settled.models.states import Behaviour, Situation, excited
+
+
+def response(behaviour: Behaviour, states: Sequence[int]) -> set[Situation]:
+    """Where `states` can end if they are one input change or burst in the first and the response to it; else empty."""
+    if len(states) < 2:
+        return set()
+    now = {after for after in behaviour.changes(Situation(states[0])) if after.state == states[1]}
+    for state in states[2:]:
+        now = {after for at in now for after in behaviour.responses(at) if after.state == state}
+    return now
+
+
+def settled(behaviour: Behaviour, states: Sequence[int]) -> bool:
+    """Whether `states` are a whole response: its last state is stable with nothing outstanding."""
+    return behaviour.is_stable(states[-1]) and any(not at.outstanding for at in response(behaviour, states))
+
+
+def parting(first: Sequence[int], second: Sequence[int]) -> int:
+    """How many states two runs have in common at their beginning."""
+    common = 0
+    for a, b in zip(first, second, strict=False):
+        if a != b:
+            break
+        common += 1
+    return common
+
+
+def stable_places(behaviour: Behaviour, states: Sequence[int]) -> Iterator[int]:
+    """Positions of stable states, the last first."""
+    return (i for i in range(len(states) - 1, -1, -1) if behaviour.is_stable(states[i]))
+
+
+def events(circuit: Circuit, before: int, after: int) -> str:
+    """What changed between two total states, as the trade writes it: `a+ b-`; a simultaneous step joins with `/`."""
+    moved = [f"{s}{'+' if after >> i & 1 else '-'}" for i, s in enumerate(circuit.signals) if (before ^ after) >> i & 1]
+    return "/".join(moved)
+
+
+def changed_inputs(circuit: Circuit, before: int, after: int) -> str:
+    """The inputs that differ between two total states, as events."""
+    return events(circuit, before & circuit.input_mask, after & circuit.input_mask).replace("/", ", ")
+
+
+def describe(circuit: Circuit, state: int) -> str:
+    """A total state in words: `s=0 r=1 q=0` (nodes of connections left out)."""
+    return " ".join(f"{s}={state >> i & 1}" for i, s in enumerate(circuit.signals) if ">" not in s)
+
+
+def excited_throughout(circuit: Circuit, states: Sequence[int]) -> list[str]:
+    """Nodes that are excited with the same value in all of `states`: a fair run does not stay among these states."""
+    high = low = -1
+    for state in states:
+        now = excited(circuit, state)
+        high, low = high & now & state, low & now & ~state
+    return [n for n in circuit.nodes if (high | low) >> circuit.place[n] & 1]
