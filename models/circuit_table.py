@@ -17,7 +17,8 @@ from settled.models.readers.equations import find_cycle
 from settled.models.source import Span
 from settled.models.specification import CircuitSource
 from settled.models.text_file import check_file, read_text
-from settled.models.toml_document import SIZE_LIMIT, Spot, listed, load
+from settled.models.toml_document import Spot, listed
+from settled.models.toml_loading import SIZE_LIMIT, load
 from settled.models.toml_readers import one_of, strings, table, text
 
 T = TypeVar("T")
@@ -175,4 +176,6 @@ def _check_cut(lines: Spot, netlist: Netlist, cut: set[str]) -> None:
     cycle = find_cycle({name: body for name, body in bodies.items() if name not in cut})
     if cycle:
         message = "a loop without a feedback line remains: " + " reads ".join(f"`{name}`" for name in cycle)
-        lines.problem("uncut-loop", message, "cuts not every loop", help='add one of them, or write `feedback = "auto"`')
+        lines.problem(
+            "uncut-loop", message, "cuts not every loop", help='add one of them, or write `feedback = "auto"`'
+        )

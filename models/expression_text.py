@@ -41,7 +41,9 @@ class _Token(NamedTuple):
     end: int
 
 
-_PART = r"(?:[A-Za-z_][A-Za-z0-9_$]*|\\[^ \t\n\r\f]+(?:[ \t\n\r\f]|\Z))(?:[ \t\n\r\f]*\[[ \t\n\r\f]*[0-9]+[ \t\n\r\f]*\])*"
+_PART = (
+    r"(?:[A-Za-z_][A-Za-z0-9_$]*|\\[^ \t\n\r\f]+(?:[ \t\n\r\f]|\Z))(?:[ \t\n\r\f]*\[[ \t\n\r\f]*[0-9]+[ \t\n\r\f]*\])*"
+)
 _TOKEN = re.compile(
     rf"(?P<name>{_PART}(?:[ \t\n\r\f]*\.[ \t\n\r\f]*{_PART})*)"
     r"|(?P<number>[0-9][0-9A-Za-z_']*)"

@@ -61,7 +61,9 @@ def check_new(name: str, spot: Spot, at_key: bool = False) -> None:
     """Note a problem when expressions could not read `name`, at the value or the key of `spot`."""
     span = spot.key_span if at_key else spot.span
     if name in ("stable", "excited"):
-        spot.problem("reserved-name", f"`{name}` is a word of expressions and cannot name a signal", "reserved", span=span)
+        spot.problem(
+            "reserved-name", f"`{name}` is a word of expressions and cannot name a signal", "reserved", span=span
+        )
     elif not name or _UNREADABLE.search(name):
         help = "the backslash and the final blank of an escaped name stand in expressions only" if "\\" in name else ""
         message = f"`{name}` cannot name a signal: white space or a leading backslash"
@@ -89,7 +91,9 @@ def unknown(spot: Spot, name: str, known: Collection[str], what: str, at_key: bo
     spot.problem("unknown-name", f"unknown {what} `{name}`", "not known", span=span, help=nearest(name, known))
 
 
-def expression(scope: Scope | None, *, inputs_only: bool = False, state_words: bool = False) -> Callable[[Spot], Expr | None]:
+def expression(
+    scope: Scope | None, *, inputs_only: bool = False, state_words: bool = False
+) -> Callable[[Spot], Expr | None]:
     """Reader of an expression over the names of `scope`; without one only its syntax is checked."""
 
     def reader(spot: Spot) -> Expr | None:
@@ -122,7 +126,9 @@ def _check_name(spot: Spot, at: NameAt, scope: Scope, inputs_only: bool) -> bool
         known = scope.inputs if inputs_only else scope.signals
         spot.problem("unknown-name", f"unknown name `{at.name}`", "not known", span=span, help=_hint(spot, at, known))
     elif inputs_only and kind != "input":
-        spot.problem("not-an-input", f"`{at.name}` is no input: `{spot.name}` reads inputs only", f"a {kind}", span=span)
+        spot.problem(
+            "not-an-input", f"`{at.name}` is no input: `{spot.name}` reads inputs only", f"a {kind}", span=span
+        )
     elif at.node and scope.net(at.name) not in scope.gates:
         message = f"`{at.name}` carries no delay: `excited` takes a node"
         spot.problem("not-a-node", message, "an input" if kind == "input" else f"a {kind}", span=span)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from pathlib import Path
 
 from settled.models import circuit_table
 from settled.models.environment import Environment
@@ -13,7 +12,8 @@ from settled.models.property_table import Context, read_properties
 from settled.models.source import Span
 from settled.models.specification import CircuitSource, Shape, Specification
 from settled.models.text_file import read_text
-from settled.models.toml_document import SIZE_LIMIT, Document, Spot, load
+from settled.models.toml_document import Spot
+from settled.models.toml_loading import SIZE_LIMIT, load
 from settled.models.toml_readers import string
 
 KEYS = ("title", "circuit", "environment", "property")
@@ -30,7 +30,9 @@ def read(path: str, *, kinds: Mapping[str, Shape], text: str | None = None) -> S
     title = root.take("title", string) or ""
     circuit = circuit_table.read_table(root)
     scope = Scope.of(circuit.netlist) if circuit else None
-    environment = root.take("environment", lambda spot: read_environment(spot, scope)) if root.has("environment") else Environment()
+    environment: Environment | None = Environment()
+    if root.has("environment"):
+        environment = read_environment(root.child("environment"), scope)
     context = Context(circuit, environment, kinds)
     properties = root.take("property", lambda spot: read_properties(spot, context)) or ()
     document.finish()

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, replace
+from itertools import count
 from typing import Any
 
 from settled.models import circuit_table
@@ -102,29 +103,29 @@ def read_properties(spot: Spot, context: Context) -> tuple[Property, ...]:
     if not isinstance(spot.value, list):
         spot.wrong_type("an array of tables", help="write `[[property]]` with double brackets")
         return ()
-    found = [read_property(member, context) for member in spot.members() if table(member)]
-    return _named(found, [member for member in spot.members() if table(member)])
+    tables = [member for member in spot.members() if table(member)]
+    _check_names(tables)
+    return _named([read_property(member, context) for member in tables])
 
 
-def _named(found: list[Property], spots: list[Spot]) -> tuple[Property, ...]:
-    """Every property with a name of its own: the check's, numbered, where the file gives none."""
+def _check_names(tables: list[Spot]) -> None:
     first: dict[str, Spot] = {}
-    for prop, spot in zip(found, spots, strict=True):
-        if prop.name and prop.name in first:
-            name = spot.child("name")
-            note = f"the first one stands at {where(first[prop.name].child('name').span)}"
-            name.problem("duplicate-name", f"two properties are called `{prop.name}`", "again", note=note)
-        elif prop.name:
-            first[prop.name] = spot
-    taken, counts, named = set(first), dict[str, int](), []
-    for prop in found:
-        name = prop.name
-        while not name or (not prop.name and name in taken):
-            counts[prop.check] = counts.get(prop.check, 0) + 1
-            name = prop.check if counts[prop.check] == 1 else f"{prop.check} {counts[prop.check]}"
-        taken.add(name)
-        named.append(Property(name, prop.check, prop.options, prop.span, prop.spans))
-    return tuple(named)
+    for name in (spot.child("name") for spot in tables if isinstance(spot.value.get("name"), str)):
+        if first.setdefault(name.value, name) is not name:
+            note = f"the first one stands at {where(first[name.value].span)}"
+            name.problem("duplicate-name", f"two properties are called `{name.value}`", "again", note=note)
+
+
+def _named(found: list[Property]) -> tuple[Property, ...]:
+    """Every property with a name of its own: the check's, numbered, where the file gives none."""
+    taken = {prop.name for prop in found}
+    free = {check: (name for name in _numbered(check) if name not in taken) for check in {p.check for p in found}}
+    return tuple(prop if prop.name else replace(prop, name=next(free[prop.check])) for prop in found)
+
+
+def _numbered(check: str) -> Iterator[str]:
+    yield check
+    yield from (f"{check} {number}" for number in count(2))
 
 
 def read_property(spot: Spot, context: Context) -> Property:
@@ -141,7 +142,7 @@ def read_property(spot: Spot, context: Context) -> Property:
     _check_shape(spot, check, shape, context)
     if shape is not None:
         _check_bounds(spot, options)
-        _check_watched(spot, shape, options, context)
+        _check_watched(spot, shape, context)
     span = spot.child("check").span if spot.has("check") else spot.span
     kept = {key: value for key, value in options.items() if value is not None}
     return Property(name, check, kept, span, {key: spot.child(key).span for key in kept})
@@ -162,7 +163,9 @@ def _takes(option: Spot, check: str, shape: Shape | None, exists: bool) -> bool:
     help = nearest(option.name, [*takes, "name", "check"])
     help = help or (f"its options are {listed(takes)}" if takes else "it takes no options")
     what = "does not take" if exists else "has no option"
-    option.problem("unknown-key", f"`{check}` {what} `{option.name}`", "not an option here", span=option.key_span, help=help)
+    option.problem(
+        "unknown-key", f"`{check}` {what} `{option.name}`", "not an option here", span=option.key_span, help=help
+    )
     return False
 
 
@@ -193,12 +196,12 @@ def _check_bounds(spot: Spot, options: Mapping[str, Any]) -> None:
         spot.child("at-most").problem("bad-value", message, "less than `at-least`")
 
 
-def _check_watched(spot: Spot, shape: Shape, options: Mapping[str, Any], context: Context) -> None:
+def _check_watched(spot: Spot, shape: Shape, context: Context) -> None:
     if not shape.watches or context.circuit is None:
         return
-    empty = spot.has("signals") and spot.value["signals"] == []
-    if empty or not (spot.has("signals") or context.circuit.netlist.outputs):
-        message = f"`{spot.value['check']}` has nothing to watch: no `signals`, and the circuit has no outputs"
-        help = 'list some: `signals = ["..."]`'
-        place = spot.child("signals" if empty else "check")
-        place.problem("nothing-to-watch", message.replace(": no `signals`, and", ": `signals` is empty") if empty else message, "nothing to watch", help=help)
+    given = spot.has("signals")
+    if spot.value["signals"] == [] if given else not context.circuit.netlist.outputs:
+        why = "`signals` is empty" if given else "it lists no `signals`, and the circuit has no outputs"
+        place = spot.child("signals" if given else "check")
+        message = f"`{spot.value['check']}` has nothing to watch: {why}"
+        place.problem("nothing-to-watch", message, "nothing to watch", help='list some: `signals = ["..."]`')

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import re
-import tomllib
 from bisect import bisect_right
 from collections.abc import Callable, Collection, Iterator
 from dataclasses import dataclass, field
@@ -13,18 +11,11 @@ from typing import Any, TypeVar
 
 from settled.models.problems import InputError, Problem, nearest
 from settled.models.source import Span
-from settled.models.toml_positions import LEVELS, Path, Place, Positions, Stretch, scan, string_offsets
+from settled.models.toml_positions import Path, Place, Positions, scan, string_offsets
 
 T = TypeVar("T")
 
-SIZE_LIMIT = 4 * 10**6
-"""Bytes of a property file that are read; a larger circuit belongs in a netlist file."""
-
-_WHERE = re.compile(r"(.*) \(at (?:line (\d+), column (\d+)|end of document)\)\Z", re.DOTALL)
 _KINDS = {str: "a string", bool: "a boolean", int: "an integer", float: "a float", list: "an array", dict: "a table"}
-_QUOTES_HELP = (
-    'in a string in double quotes a backslash is written `\\\\`; in single quotes it stands for itself: \'\\bus+1 \''
-)
 
 
 @dataclass
@@ -38,10 +29,12 @@ class Document:
 
     @cached_property
     def positions(self) -> Positions:
+        """Where everything stands."""
         return scan(self.text)
 
     @cached_property
     def line_starts(self) -> list[int]:
+        """Offset of the first character of each line, and of a line after the last."""
         return [0, *accumulate(len(line) + 1 for line in self.text.split("\n"))]
 
     @property
@@ -65,49 +58,6 @@ class Document:
             return at.file != self.file, at.file, at.line, at.column
 
         raise InputError(sorted(dict.fromkeys(self.problems), key=order))
-
-
-def load(file: str, text: str) -> Document:
-    """The document of a TOML text. Raises `InputError` for what is not TOML."""
-    text = text.replace("\r\n", "\n")
-    document = Document(file, text)
-    if not text.strip():
-        raise InputError(Problem("empty-file", f"`{file}` is empty", Span(file, 1, 1)))
-    if document.positions.too_deep is not None:
-        at = document.positions.too_deep
-        message = f"keys, arrays and tables nest deeper than {LEVELS} levels"
-        raise InputError(Problem("too-deep", message, document.span(at, at + 1), f"level {LEVELS + 1}"))
-    try:
-        document.data = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        raise InputError(_syntax_problems(document, str(error))) from None
-    except (ValueError, RecursionError):
-        raise InputError(_long_numbers(document)) from None
-    return document
-
-
-def _syntax_problems(document: Document, error: str) -> list[Problem]:
-    if document.positions.repeated and re.match(r"Cannot|Duplicate", error):
-        return [_repeated(document, *pair) for pair in document.positions.repeated]
-    match = _WHERE.match(error)
-    what, line, column = match.groups() if match else (error, None, None)
-    at = len(document.text.rstrip("\n")) if line is None else document.line_starts[int(line) - 1] + int(column) - 1
-    help = _QUOTES_HELP if "\\" in what else ""
-    message = f"not TOML: {what[:1].lower()}{what[1:]}" + (", found the end of the file" if line is None else "")
-    return [Problem("toml-syntax", message, document.span(at, at + 1), "TOML cannot be read on from here", help=help)]
-
-
-def _repeated(document: Document, first: Place, second: Place) -> Problem:
-    name = document.text[slice(*second.key)]
-    note = f"the first one stands at {where(document.span(*first.key))}"
-    return Problem("duplicate-key", f"`{name}` is given twice", document.span(*second.key), "the second one", (note,))
-
-
-def _long_numbers(document: Document) -> list[Problem]:
-    places = [place.value for place in document.positions.places.values()]
-    long = [at for at in places if re.match(r"[+-]?[0-9_]{1000}", document.text[slice(*at)])]
-    start, end = long[0] if long else (0, 1)
-    return [Problem("bad-value", "a number is too large", document.span(start, end), "too many digits")]
 
 
 @dataclass(frozen=True)
@@ -169,7 +119,7 @@ class Spot:
     def has(self, key: str) -> bool:
         return key in self.value
 
-    def take(self, key: str, reader: Callable[[Spot], T]) -> T | None:
+    def take(self, key: str, reader: Callable[[Spot], T | None]) -> T | None:
         """What `reader` makes of the member `key`; `None` when there is none."""
         return reader(self.child(key)) if key in self.value else None
 

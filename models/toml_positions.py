@@ -7,6 +7,7 @@ two things that `tomllib` bears badly it finds itself: nesting beyond `LEVELS` a
 from __future__ import annotations
 
 import re
+from contextlib import suppress
 from dataclasses import dataclass, field
 from typing import NamedTuple
 
@@ -61,10 +62,8 @@ class _Open(NamedTuple):
 def scan(text: str) -> Positions:
     """Positions in `text`, whose lines end in `\\n`; as far as they go when `text` is not TOML."""
     scanner = _Scanner(text)
-    try:
+    with suppress(_Stop, IndexError):
         scanner.statements()
-    except (_Stop, IndexError):
-        pass
     return scanner.found
 
 

@@ -109,7 +109,9 @@ def strings(spot: Spot) -> list[Spot] | None:
         word = text(member)
         if word is not None and first.setdefault(word, member) is not member:
             message = f"`{word}` stands twice in `{spot.name}`"
-            member.problem("duplicate-name", message, "again", note=f"the first one stands at {where(first[word].span)}")
+            member.problem(
+                "duplicate-name", message, "again", note=f"the first one stands at {where(first[word].span)}"
+            )
     return list(first.values())
 
 
