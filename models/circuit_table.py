@@ -52,7 +52,7 @@ def read_table(root: Spot, chain: tuple[Path, ...] = ()) -> CircuitSource | None
     if not root.has("circuit"):
         root.problem("missing-key", "there is no `[circuit]` table", "no `[circuit]` in this file")
         return None
-    return circuit(root.child("circuit"), chain)
+    return circuit(root.child("circuit"), (*chain, Path(root.document.file).resolve()))
 
 
 def circuit(spot: Spot, chain: tuple[Path, ...] = ()) -> CircuitSource | None:
@@ -68,7 +68,7 @@ def circuit(spot: Spot, chain: tuple[Path, ...] = ()) -> CircuitSource | None:
     _refuse(spot, _FILE_KEYS, "belongs to a netlist file; this circuit is given by equations")
     _refuse(spot, ("feedback",), "does not apply to equations: each line of `excitation` is a node")
     netlist = equations.netlist(spot, Path(spot.document.file).stem if spot.document.file != "-" else "circuit")
-    return _under_delays(spot, netlist, "feedback")
+    return None if netlist is None else _under_delays(spot, netlist, "feedback")
 
 
 def _refuse(spot: Spot, keys: tuple[str, ...], why: str, code: str = "conflict") -> None:
@@ -90,8 +90,7 @@ def _from_file(spot: Spot, chain: tuple[Path, ...]) -> CircuitSource | None:
     if name.endswith(".toml"):
         others = tuple(key for key in (*_FILE_KEYS, *_MODEL_KEYS) if key != "file")
         _refuse(spot, others, f"stands in `{name}`, which says all about its circuit")
-        here = (*chain, Path(spot.document.file).resolve())
-        return _guarded(spot, lambda: read_file(folder / name, named_at=span, chain=here))
+        return _guarded(spot, lambda: read_file(folder / name, named_at=span, chain=chain))
     netlist = _guarded(spot, lambda: _read_netlist(folder / name, top, _libraries(folder, library), span))
     return None if netlist is None else _under_delays(spot, netlist, "gate")
 

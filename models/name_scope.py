@@ -11,7 +11,7 @@ from settled.models.expression_text import NameAt, parse
 from settled.models.logic import Expr, excited, substitute
 from settled.models.netlist import Netlist
 from settled.models.problems import InputError, nearest
-from settled.models.toml_document import Spot
+from settled.models.toml_document import Spot, listed
 from settled.models.toml_readers import bit, strings, table
 
 _UNREADABLE = re.compile(r"[\s\x00-\x1f\x7f]|\A\\")
@@ -88,7 +88,12 @@ def names_among(known: Collection[str] | None, what: str) -> Callable[[Spot], tu
 def unknown(spot: Spot, name: str, known: Collection[str], what: str, at_key: bool = False) -> None:
     """Note that there is no `what` called `name`."""
     span = spot.key_span if at_key else spot.span
-    spot.problem("unknown-name", f"unknown {what} `{name}`", "not known", span=span, help=nearest(name, known))
+    spot.problem("unknown-name", f"unknown {what} `{name}`", "not known", span=span, help=suggestion(name, known))
+
+
+def suggestion(name: str, known: Collection[str]) -> str:
+    """The nearest known name; all of them when none is near and they are few."""
+    return nearest(name, known) or (f"the known names are {listed(known)}" if 0 < len(known) <= 8 else "")
 
 
 def expression(
@@ -143,7 +148,7 @@ def _hint(spot: Spot, at: NameAt, known: Collection[str]) -> str:
     span = spot.inside(at.start, at.end)
     start = document.line_starts[span.line - 1] + span.column - 1
     if not at.start or not _SWALLOWED.search(document.text[start - 2 : start]):
-        return nearest(at.name, known)
+        return suggestion(at.name, known)
     code = document.text[start - 2 : start]
     return f"`{code}` in double quotes is a control character; write the expression in single quotes"
 

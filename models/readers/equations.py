@@ -12,7 +12,6 @@ from graphlib import CycleError, TopologicalSorter
 from settled.models.logic import FALSE, Expr, support
 from settled.models.name_scope import Scope, check_new, expression, names_among, new_names
 from settled.models.netlist import Gate, Netlist
-from settled.models.source import Span
 from settled.models.toml_document import Spot, where
 from settled.models.toml_readers import table
 
@@ -20,27 +19,31 @@ KEYS = ("inputs", "outputs", "excitation", "define", "cells")
 """What a circuit given by equations takes and one read from a file does not."""
 
 
-def netlist(circuit: Spot, name: str) -> Netlist:
-    """The netlist of a `[circuit]` table; problems are noted in its document, and what is left is returned."""
-    inputs = circuit.take("inputs", new_names) or ()
+def netlist(circuit: Spot, name: str) -> Netlist | None:
+    """The netlist of a `[circuit]` table; problems are noted in its document, `None` when they leave no names."""
+    inputs = circuit.take("inputs", new_names)
     excitation = circuit.take("excitation", table)
     define = circuit.take("define", table)
-    scope = Scope(inputs, _keys(excitation), dict.fromkeys(_keys(define)))
-    _check_names(circuit, inputs, excitation, define)
-    if circuit.has("excitation") and excitation is not None and not excitation.value:
+    given = {"inputs": inputs, "excitation": excitation, "define": define}
+    complete = all(value is not None for key, value in given.items() if circuit.has(key))
+    scope = Scope(inputs or (), _keys(excitation), dict.fromkeys(_keys(define))) if complete else None
+    _check_names(circuit, excitation, define)
+    if excitation is not None and not excitation.value:
         excitation.problem("bad-value", "`excitation` is empty: a circuit has at least one node", "no line in it")
-    gates = _functions(excitation, scope)
-    defined = _functions(define, scope)
+    gates, defined = _functions(excitation, scope), _functions(define, scope)
+    outputs = circuit.take("outputs", names_among(scope.signals if scope else None, "signal"))
+    cells = circuit.take("cells", lambda spot: _cells(spot, scope))
     if define is not None:
         _check_cycles(define, defined)
-    spans = {spot.name: spot.key_span for spot in excitation.members()} if excitation else {}
+    if scope is None or excitation is None:
+        return None
     return Netlist(
         name=name,
-        inputs=inputs,
-        gates=tuple(Gate(gate, function, spans[gate]) for gate, function in gates.items()),
-        outputs=circuit.take("outputs", names_among(scope.signals, "signal")) or (),
+        inputs=scope.inputs,
+        gates=tuple(Gate(line.name, gates[line.name], line.key_span) for line in excitation.members()),
+        outputs=outputs or (),
         defined=defined,
-        cells=circuit.take("cells", lambda spot: _cells(spot, scope)) or {},
+        cells=cells or {},
         equations=True,
     )
 
@@ -49,15 +52,17 @@ def _keys(spot: Spot | None) -> tuple[str, ...]:
     return tuple(spot.value) if spot else ()
 
 
-def _functions(spot: Spot | None, scope: Scope) -> dict[str, Expr]:
+def _functions(spot: Spot | None, scope: Scope | None) -> dict[str, Expr]:
     """The expression of each line; 0 stands in for one that cannot be read."""
     reader = expression(scope)
     return {line.name: reader(line) or FALSE for line in spot.members()} if spot else {}
 
 
-def _check_names(circuit: Spot, inputs: tuple[str, ...], *tables: Spot | None) -> None:
+def _check_names(circuit: Spot, *tables: Spot | None) -> None:
     """Every name of a line is one that expressions can read, and names one signal only."""
-    first: dict[str, Span] = dict.fromkeys(inputs, circuit.child("inputs").span) if inputs else {}
+    given = circuit.child("inputs") if circuit.has("inputs") else None
+    members = list(given.members()) if given and isinstance(given.value, list) else []
+    first = {member.value: member.span for member in members if isinstance(member.value, str)}
     for line in (line for spot in tables if spot for line in spot.members()):
         check_new(line.name, line, at_key=True)
         if line.name in first:
@@ -89,14 +94,12 @@ def find_cycle(bodies: Mapping[str, Expr]) -> list[str]:
     return []
 
 
-def _cells(spot: Spot, scope: Scope) -> dict[str, tuple[str, ...]]:
+def _cells(spot: Spot, scope: Scope | None) -> dict[str, tuple[str, ...]]:
     """Closed cells: groups of nodes without a common member."""
     cells: dict[str, tuple[str, ...]] = {}
-    if table(spot) is None:
-        return cells
     home: dict[str, str] = {}
-    for group in spot.members():
-        cells[group.name] = names_among(scope.gates, "node")(group) or ()
+    for group in spot.members() if table(spot) else ():
+        cells[group.name] = names_among(scope.gates if scope else None, "node")(group) or ()
         for node in cells[group.name]:
             if home.setdefault(node, group.name) != group.name:
                 message = f"`{node}` is in two cells, `{home[node]}` and `{group.name}`"

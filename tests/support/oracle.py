@@ -45,7 +45,7 @@ def decide(circuit: Circuit, environment: Environment, check: str, options: Opti
         raise Unaskable("no input vector satisfies `assume`")
     verdict = CHECKS[check](world, options)
     if check in ("settles", "race-free") and verdict.verdict == "refuted":
-        single = decide(replace(circuit, winners="one"), environment, check, options)
+        single = CHECKS[check](World(replace(circuit, winners="one"), environment), options)
         verdict.facts["needs_simultaneous"] = single.verdict == "proved"
     return verdict
 

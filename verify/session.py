@@ -1,0 +1,195 @@
+"""From a file to verdicts: the only module that knows every hop of the way.
+
+property text -> netlist -> circuit under a delay model -> questions -> answers -> evidence walked again -> verdict
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+from settled.encodings.delays import Placement, place
+from settled.models.circuit import Circuit
+from settled.models.logic import Expr, support
+from settled.models.problems import InputError, Problem, nearest
+from settled.models.property_file import read, read_circuit
+from settled.models.specification import CircuitSource, Property, Specification
+from settled.models.environment import Environment
+from settled.models.states import Behaviour
+from settled.verify.engines import engines
+from settled.verify.limits import LimitReached, Limits
+from settled.verify.properties import Kind, kinds, shapes, standard
+from settled.verify.questions import Answer, Question, Task, undecided
+from settled.verify.replay import replay
+from settled.verify.result import FileReport, Result, trace
+from settled.verify.understood import understood
+
+WITHOUT_START = ("stable-states", "initialises")
+
+
+@dataclass
+class Settings:
+    """What the user asked beside the files: names of properties, limits for one property, a listener."""
+
+    only: Sequence[str] = ()
+    seconds: float = 60.0
+    states: int = 4_000_000
+    report: Callable[[str], None] | None = None
+
+
+@dataclass
+class Session:
+    """One file being checked. `results` comes property by property, so that an interruption loses nothing decided."""
+
+    specification: Specification
+    settings: Settings
+    circuit: Circuit = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.circuit = placed(self.specification.circuit)
+        self._memory: dict[str, dict[str, Any]] = {}
+        self.properties = chosen(self.specification, self.settings.only)
+        check_inputs(self.specification, self.circuit, self.properties)
+
+    def understood(self) -> tuple[tuple[str, str], ...]:
+        """The lines of the echo."""
+        return understood(self.specification.circuit, self.circuit, self.specification.environment)
+
+    def results(self) -> Iterator[Result]:
+        """Decide one property after the other."""
+        for prop in self.properties:
+            if self.settings.report is not None:
+                self.settings.report(prop.name)
+            yield self.decide(prop)
+
+    def report(self, results: Sequence[Result]) -> FileReport:
+        """All about the file."""
+        spec = self.specification
+        return FileReport(spec.path, spec.title, self.circuit, spec.environment, self.understood(), tuple(results))
+
+    def decide(self, prop: Property) -> Result:
+        """The verdict on one property, its evidence checked. Raises `ReplayFailed` when the evidence fails."""
+        began = time.perf_counter()
+        kind = kinds()[prop.check]
+        options = prop.options
+        question = kind.question(self.circuit, options)
+        answer = self.ask(self.circuit, question)
+        claim, facts = kind.claim(self.circuit, options), dict(answer.facts)
+        if answer.verdict == "refuted":
+            behaviour = Behaviour(self.circuit, self.specification.environment)
+            claim, facts = replay(kind, behaviour, question, answer)
+            facts |= {k: v for k, v in answer.facts.items() if k in ("some_run_settles", "vector")}
+            facts |= self._compare_winners(kind, question)
+        return Result(
+            name=prop.name,
+            check=prop.check,
+            verdict=answer.verdict,
+            claim=claim,
+            method=answer.method,
+            seconds=time.perf_counter() - began,
+            reason=answer.reason,
+            traces=tuple(trace(self.circuit, run, _named(self.circuit, options)) for run in answer.runs),
+            vacuous=answer.verdict == "proved" and not answer.exercised,
+            ranged=answer.ranged,
+            facts=facts,
+            certificate=answer.certificate,
+        )
+
+    def ask(self, circuit: Circuit, question: Question) -> Answer:
+        """The first decision that an engine comes to; else why the last one came to none."""
+        limits = Limits(self.settings.seconds, self.settings.states, self.settings.report)
+        task = Task(circuit, self.specification.environment, limits, self._memory.setdefault(circuit.winners, {}))
+        answer = undecided("no engine answers this kind of question", "none")
+        for engine in engines():
+            if type(question) in engine.answers:
+                try:
+                    answer = engine.answers[type(question)](task, question)
+                except LimitReached as reached:
+                    answer = undecided(str(reached), engine.name)
+                if answer.verdict != "undecided":
+                    break
+        return answer
+
+    def _compare_winners(self, kind: Kind, question: Question) -> dict[str, bool]:
+        if not kind.compares_winners or self.circuit.winners == "one":
+            return {"needs_simultaneous": False} if kind.compares_winners else {}
+        alone = self.ask(replace(self.circuit, winners="one"), question)
+        return {} if alone.verdict == "undecided" else {"needs_simultaneous": alone.verdict == "proved"}
+
+
+def placed(source: CircuitSource) -> Circuit:
+    """The circuit under the delay model that its source names."""
+    feedback = "auto" if source.feedback is None else source.feedback
+    return place(source.netlist, source.delay, Placement(source.winners, feedback, source.isochronic, source.closed))
+
+
+def load(path: str, text: str | None = None) -> Specification:
+    """Read a property file or a netlist; without properties, the standard questions are put in."""
+    if text is None and not path.endswith(".toml"):
+        source = read_circuit(path)
+        spec = Specification(path, source.netlist.name, source, Environment(), ())
+    else:
+        spec = read(path, kinds=shapes(), text=text)
+    if spec.properties:
+        return spec
+    asked = [k for k in standard() if spec.environment.mode in ("fundamental", k.shape.mode) or k.shape.mode == "any"]
+    if not spec.circuit.netlist.outputs:
+        asked = [k for k in asked if not k.shape.watches]
+    return replace(spec, properties=tuple(Property(k.name, k.name, {}) for k in asked))
+
+
+def chosen(spec: Specification, only: Sequence[str]) -> tuple[Property, ...]:
+    """The properties that are named in `only`, in the order of the file; all of them when it is empty."""
+    known = [p.name for p in spec.properties]
+    missing = [name for name in only if name not in known]
+    if missing:
+        raise InputError(
+            [
+                Problem("unknown-property", f"no property is called `{name}` in {spec.path}", help=nearest(name, known))
+                for name in missing
+            ]
+        )
+    return tuple(p for p in spec.properties if not only or p.name in only)
+
+
+def check_inputs(spec: Specification, circuit: Circuit, properties: Sequence[Property]) -> None:
+    """Raise `InputError` when no input vector satisfies `assume`, or no total state the start that is needed."""
+    from settled.verify.stable_states import satisfiable, start_conditions
+
+    environment = spec.environment
+    if environment.assume and not satisfiable(circuit, environment.assume):
+        raise InputError(
+            Problem("impossible-assume", "no input vector satisfies `assume`", spec.spans.get("assume"), "the assumptions")
+        )
+    needed = [p for p in properties if p.check not in WITHOUT_START]
+    if needed and not satisfiable(circuit, start_conditions(circuit, environment)):
+        kind = "stable total state" if environment.mode == "fundamental" else "total state"
+        raise InputError(
+            Problem(
+                "impossible-start",
+                f"no {kind} satisfies `assume` and `start`, and `{needed[0].name}` begins there",
+                spec.spans.get("start"),
+                "the start",
+                help="`stable-states` and `initialises` are the checks that do not begin in a start state",
+            )
+        )
+
+
+def _named(circuit: Circuit, options: Mapping[str, Any]) -> list[str]:
+    expressions = [e for e in options.values() if isinstance(e, Expr)]
+    listed = [n for v in options.values() if isinstance(v, tuple) for n in v if isinstance(n, str)]
+    return [n for n in [*listed, *support(*expressions)] if n in circuit.defined]
+
+
+def check(
+    path: str, *, only: Sequence[str] = (), seconds: float = 60.0, states: int = 4_000_000, text: str | None = None
+) -> FileReport:
+    """Check every property of a file (a property file or a netlist) and give the report.
+
+    `only`: names of properties; `seconds`, `states`: limits for one property; `text`: the content instead of the
+    file's. Raises `InputError` for input that cannot be used.
+    """
+    session = Session(load(path, text), Settings(only, seconds, states))
+    return session.report(list(session.results()))

@@ -1,0 +1,81 @@
+"""What was understood of a file, said before any verdict: names and sentences, no judgement."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from settled.models.circuit import Circuit, loops
+from settled.models.environment import Environment
+from settled.models.logic import TRUE, to_text
+from settled.models.specification import CircuitSource
+
+MODELS = {
+    "feedback": "feedback (only the feedback lines carry a delay, all other gates none)",
+    "gate": "gate (every gate output carries a delay; wires have none: a promise of the layout)",
+    "wire": "wire (every gate output and every connection carries a delay)",
+}
+CHANGES = {
+    "single": "one input at a time, in stable total states only",
+    "simultaneous": "any set of inputs in one instant, in stable total states only",
+    "burst": "any set of inputs, one after the other in any order, begun in stable total states only",
+}
+
+
+def understood(source: CircuitSource, circuit: Circuit, environment: Environment) -> tuple[tuple[str, str], ...]:
+    """Lines of the echo: what each is about, and what was understood."""
+    found = loops(circuit.nodes, circuit.excitation)
+    memory = [n for n in circuit.nodes if [n] in found or n in circuit.excitation and _reads_itself(circuit, n)]
+    lines = [
+        ("circuit", f"{circuit.name}: {_count(len(source.netlist.gates), 'excitation' if source.netlist.equations else 'gate')}"),
+        ("inputs", _names(circuit.inputs)),
+        ("nodes", _names(circuit.nodes)),
+        ("outputs", _names(circuit.outputs)),
+        ("loops", "; ".join(_names(part, 8) for part in found) or "none: the circuit has no feedback"),
+        *([("storage", f"in one node: {_names(memory, 8)}")] if memory else []),
+        ("delay model", MODELS[circuit.delay]),
+        ("winners", f"{circuit.winners} ({'any excited nodes may switch together' if circuit.winners == 'any' else 'one node at a time'})"),
+        ("environment", _mode(environment)),
+        ("assumed", "; ".join(to_text(e) for e in environment.assume) or "nothing about the inputs"),
+        *[("guard", text) for text in _guards(circuit, environment)],
+        ("start", _start(environment)),
+        *[("note", note) for note in circuit.notes],
+    ]
+    return tuple(lines)
+
+
+def _reads_itself(circuit: Circuit, node: str) -> bool:
+    from settled.models.logic import support
+
+    return node in support(circuit.excitation[node])
+
+
+def _names(names: Sequence[str], most: int = 24) -> str:
+    if len(names) <= most:
+        return ", ".join(names) or "none"
+    return f"{', '.join(names[: most - 2])}, ... ({len(names)} in all)"
+
+
+def _count(number: int, what: str) -> str:
+    return f"{number} {what}{'' if number == 1 else 's'}"
+
+
+def _mode(environment: Environment) -> str:
+    if environment.mode == "fundamental":
+        return f"fundamental mode; inputs change {CHANGES[environment.changes]}"
+    return "input-output mode; an input may change whenever its guard is true"
+
+
+def _guards(circuit: Circuit, environment: Environment) -> list[str]:
+    lines = []
+    for name in circuit.inputs:
+        guard = environment.guards.get(name)
+        if guard is not None:
+            when = [f"{name}{sign} when {to_text(e)}" for sign, e in (("+", guard.rises), ("-", guard.falls)) if e is not TRUE]
+            lines.append(", ".join(when or [f"{name} at any time"]) + ("; must" if guard.must else ""))
+    return lines
+
+
+def _start(environment: Environment) -> str:
+    values = " ".join(f"{s}={int(v)}" for s, v in environment.start.items())
+    sort = "stable total state" if environment.mode == "fundamental" else "total state"
+    return f"every {sort}{f' with {values}' if values else ''} that the assumptions admit"
