@@ -6,7 +6,8 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
 
-from settled.models.logic import STABLE, Expr, and_, not_, rename, substitute, topological, var, xor
+from settled.models.components import components
+from settled.models.logic import STABLE, Expr, and_, not_, rename, substitute, support, var, xor
 
 
 @dataclass(frozen=True, eq=False)
@@ -81,44 +82,28 @@ class Circuit:
 
 def expand(defined: Mapping[str, Expr]) -> dict[str, Expr]:
     """Definitions with the definitions they read put in. Raises `ValueError` naming a cycle if there is one."""
-    order = list(definition_order(defined))
     done: dict[str, Expr] = {}
-    for name in order:
+    for name in definition_order(defined):
         done[name] = rename([defined[name]], done)[0]
     return {name: done[name] for name in defined}
 
 
 def definition_order(defined: Mapping[str, Expr]) -> list[str]:
-    """Names of `defined`, each after those it reads. Raises `ValueError` whose text names a cycle."""
-    import networkx as nx
-
-    graph: nx.DiGraph = nx.DiGraph()
-    graph.add_nodes_from(defined)
-    for name, body in defined.items():
-        graph.add_edges_from((r, name) for r in _reads(body) if r in defined)
-    try:
-        return list(nx.topological_sort(graph))
-    except nx.NetworkXUnfeasible:
-        cycle = [edge[0] for edge in nx.find_cycle(graph)]
-        raise ValueError(" -> ".join([*cycle, cycle[0]])) from None
+    """Names of `defined`, each after those it reads. Raises `ValueError` whose text names those of a cycle."""
+    reads = {name: support(body) for name, body in defined.items()}
+    order: list[str] = []
+    for part in components(reads):
+        if len(part) > 1 or part[0] in reads[part[0]]:
+            raise ValueError(", ".join(part))
+        order += part
+    return order
 
 
 def loops(nodes: Sequence[str], excitation: Mapping[str, Expr]) -> list[list[str]]:
     """The feedback loops, as the sets of nodes that reach one another; each in node order, in order of first node."""
-    import networkx as nx
-
-    graph: nx.DiGraph = nx.DiGraph()
-    graph.add_nodes_from(nodes)
-    for name in nodes:
-        graph.add_edges_from((r, name) for r in _reads(excitation[name]) if r in excitation)
+    reads = {name: support(excitation[name]) for name in nodes}
     rank = {n: i for i, n in enumerate(nodes)}
     found = [
-        sorted(part, key=rank.__getitem__)
-        for part in nx.strongly_connected_components(graph)
-        if len(part) > 1 or graph.has_edge(*(2 * tuple(part)))
+        sorted(part, key=rank.__getitem__) for part in components(reads) if len(part) > 1 or part[0] in reads[part[0]]
     ]
     return sorted(found, key=lambda part: rank[part[0]])
-
-
-def _reads(e: Expr) -> list[str]:
-    return [leaf.name for leaf in topological([e]) if leaf.op == "var"]

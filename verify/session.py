@@ -12,11 +12,11 @@ from typing import Any
 
 from settled.encodings.delays import Placement, place
 from settled.models.circuit import Circuit
+from settled.models.environment import Environment
 from settled.models.logic import Expr, support
 from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_file import read, read_circuit
 from settled.models.specification import CircuitSource, Property, Specification
-from settled.models.environment import Environment
 from settled.models.states import Behaviour
 from settled.verify.engines import engines
 from settled.verify.limits import LimitReached, Limits

@@ -12,14 +12,13 @@ from typing import Any
 import numpy as np
 
 from settled.encodings.packed import Packed, TooWide
-from settled.models.logic import and_
 from settled.models.states import Behaviour, Run, Situation
 from settled.verify.engines import Engine
 from settled.verify.explicit.changes_thrice import ThreeChanges
-from settled.verify.explicit.graph import NONE, Graph
+from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.hazards import Watch, flickering, shortest_flicker
 from settled.verify.explicit.oscillations import shortest_lasso
-from settled.verify.explicit.races import all_ends, run_to, nearest_ends, shortest_race
+from settled.verify.explicit.races import nearest_ends, run_to, shortest_race
 from settled.verify.limits import LimitReached
 from settled.verify.questions import (
     Answer,
@@ -27,7 +26,6 @@ from settled.verify.questions import (
     DivergesAfterThree,
     Flickers,
     Oscillates,
-    Question,
     Reaches,
     Task,
     undecided,
@@ -134,21 +132,10 @@ def oscillates(task: Task, _: Oscillates) -> Answer:
     graph = explored(task)
     found = shortest_lasso(graph)
     if found is None:
-        return proved(graph, bool(len(graph.change_edges.source) or (graph.excited != 0).any()))
+        return proved(graph, bool(len(graph.change_edges.source) or len(graph.step_edges.source)))
     path, loop = found
-    settles = _held_ends(graph, path[loop])
-    return refuted(graph, [run(graph, "once round the oscillation", path, loop)], {"some_run_settles": settles})
-
-
-def _held_ends(graph: Graph, vertex: int) -> bool:
-    seen, fresh = {vertex}, [vertex]
-    while fresh:
-        if (graph.excited[fresh] == 0).any():
-            return True
-        _, after = graph.held_edges.out_of(np.array(fresh))
-        fresh = sorted(set(after.tolist()) - seen)
-        seen.update(fresh)
-    return False
+    facts = {"some_run_settles": not len(graph.restless)}
+    return refuted(graph, [run(graph, "once round the oscillation", path, loop)], facts)
 
 
 def diverges(task: Task, _: Diverges) -> Answer:

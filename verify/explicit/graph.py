@@ -1,12 +1,11 @@
 """The graph of reachable total states, explored layer by layer, and what is read off it.
 
-Layers are ordered by (changes made by the environment, steps): the first vertex found that satisfies a condition
-has a run to it with the fewest changes and, among those, the fewest steps.
+Layers are ordered by (steps in which an input changes, steps): the first vertex found that satisfies a condition
+has a run to it with the fewest input changes and, among those, the fewest steps.
 """
 
 from __future__ import annotations
 
-from collections import defaultdict
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from functools import cached_property
@@ -16,12 +15,14 @@ import numpy as np
 import numpy.typing as npt
 
 from settled.encodings.packed import Bits, Packed, Places, Words
+from settled.models.components import components
 from settled.verify.limits import LimitReached, Limits
 
 Key = tuple[int, int]
 Moves = Callable[[Words], tuple[Places, Words]]
 
 BLOCK = 1 << 21
+LARGE = 50_000
 NONE, MANY = -1, -2
 
 
@@ -69,15 +70,15 @@ class Known:
 
 @dataclass
 class Search:
-    """A layered search. `steps` stay in a round; `changes` begin the next one; `flagged` ends the search.
+    """A layered search along `moves`; `flagged` ends it. The bits of `inputs` tell changes from mere steps.
 
-    After `run`, `layers` holds the vertices by key (round, steps) and `hit` the least flagged vertex of the first
-    layer that has one, with its key, or None.
+    After `run`, `layers` holds the vertices by key (input changes, steps), least first, and `hit` the least flagged
+    vertex of the first layer that has one, with its key, or None.
     """
 
     bits: int
-    steps: Moves
-    changes: Moves | None
+    inputs: np.uint64
+    moves: Moves
     limits: Limits
     flagged: Callable[[Words], Bits] | None = None
     layers: dict[Key, Words] = field(default_factory=dict)
@@ -101,13 +102,18 @@ class Search:
             if self.flagged is not None and (bad := fresh[self.flagged(fresh)]).size:
                 self.hit = (key, int(bad[0]))
                 return self
-            for after, moves in (((key[0], key[1] + 1), self.steps), ((key[0] + 1, key[1] + 1), self.changes)):
-                if moves is not None and len(found := moves(fresh)[1]):
+            source, target = self.moves(fresh)
+            changed = self.changed(fresh[source], target)
+            for after, found in (((key[0], key[1] + 1), target[~changed]), ((key[0] + 1, key[1] + 1), target[changed])):
+                if len(found):
                     if after not in waiting:
                         heappush(queue, after)
-                        waiting[after] = []
-                    waiting[after].append(np.unique(found))
+                    waiting.setdefault(after, []).append(np.unique(found))
         return self
+
+    def changed(self, before: Words, after: Words) -> Bits:
+        """Whether an input changes in each move."""
+        return (before ^ after) & self.inputs != 0
 
     def path(self, key: Key, target: int) -> list[tuple[Key, int]]:
         """The vertices from a source to `target` in layer `key`, the least predecessor chosen at each step."""
@@ -118,14 +124,15 @@ class Search:
 
     def _before(self, key: Key, target: int) -> tuple[Key, int] | None:
         rounds, steps = key
-        for before, moves in (((rounds, steps - 1), self.steps), ((rounds - 1, steps - 1), self.changes)):
+        for before in ((rounds, steps - 1), (rounds - 1, steps - 1)):
             layer = self.layers.get(before)
-            if layer is None or moves is None:
+            if layer is None:
                 continue
-            source, reached = moves(layer)
-            hits = source[reached == np.uint64(target)]
-            if len(hits):
-                return before, int(layer[hits.min()])
+            source, reached = self.moves(layer)
+            origin = layer[source[reached == np.uint64(target)]]
+            origin = origin[self.changed(origin, np.uint64(target)) == (before[0] < rounds)]
+            if len(origin):
+                return before, int(origin.min())
         return None
 
 
@@ -139,7 +146,7 @@ class Graph:
 
     def __init__(self, packed: Packed, limits: Limits) -> None:
         self.packed, self.limits = packed, limits
-        self.search = Search(packed.bits, self.steps, self.changes, limits)
+        self.search = Search(packed.bits, packed.input_mask, self.moves, limits)
         self.unfinished: str | None = None
         try:
             self.search.run({(0, 0): starts(packed, limits)})
@@ -180,6 +187,11 @@ class Graph:
         place = np.searchsorted(self.vertices, words)
         place[place == len(self)] = 0
         return np.where(self.vertices[place] == words, place, -1) if len(self) else place - 1
+
+    def moves(self, vertices: Words) -> tuple[Places, Words]:
+        """Every move: steps, and changes that the environment makes of its own accord."""
+        parts = self.steps(vertices), self.changes(vertices)
+        return np.concatenate([parts[0][0], parts[1][0]]), np.concatenate([parts[0][1], parts[1][1]])
 
     def steps(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the response (in input-output mode: every step)."""
@@ -249,6 +261,17 @@ class Graph:
             low[several], high[several] = -1, len(self)
             fresh = touched[(low[touched] != old_low) | (high[touched] != old_high)]
         return np.where(high < 0, NONE, np.where(low < 0, MANY, low))
+
+    @cached_property
+    def restless(self) -> Places:
+        """Vertices from which, with the inputs held, no run reaches a stable total state."""
+        settling = self.excited == 0
+        fresh = np.flatnonzero(settling)
+        while len(fresh):
+            before = np.unique(self.held_edges.into(fresh)[0])
+            fresh = before[~settling[before]]
+            settling[fresh] = True
+        return np.flatnonzero(~settling)
 
     @cached_property
     def cores(self) -> list[Places]:
@@ -330,20 +353,32 @@ def fair_components(edges: Edges, vertices: Words, excited: Words) -> list[Place
     left = _with_successors(edges)
     if not len(left):
         return []
-    from scipy.sparse import coo_array
-    from scipy.sparse.csgraph import connected_components
-
     place = np.full(edges.size, -1, np.int64)
     place[left] = np.arange(len(left))
     source, target = place[edges.source], place[edges.target]
     inside = (source >= 0) & (target >= 0)
-    shape = (len(left), len(left))
-    matrix = coo_array((np.ones(int(inside.sum()), np.int8), (source[inside], target[inside])), shape=shape)
-    _, label = connected_components(matrix, directed=True, connection="strong")
+    label = _components(len(left), source[inside], target[inside])
     order = np.argsort(label, kind="stable")
     parts = np.split(left[order], np.flatnonzero(np.diff(label[order])) + 1)
     found = [part for part in parts if len(part) > 1 and not stuck(vertices[part], excited[part])]
     return sorted(found, key=lambda part: int(part[0]))
+
+
+def _components(size: int, source: Places, target: Places) -> Places:
+    """A number for each vertex, the same for those that reach one another. scipy costs an import, and wins if large."""
+    if len(source) > LARGE:
+        from scipy.sparse import coo_array
+        from scipy.sparse.csgraph import connected_components
+
+        matrix = coo_array((np.ones(len(source), np.int8), (source, target)), shape=(size, size))
+        return np.asarray(connected_components(matrix, directed=True, connection="strong")[1], np.int64)
+    successors: dict[int, list[int]] = {v: [] for v in range(size)}
+    for v, w in zip(source.tolist(), target.tolist(), strict=True):
+        successors[v].append(w)
+    label = np.zeros(size, np.int64)
+    for number, part in enumerate(components(successors)):
+        label[part] = number
+    return label
 
 
 def stuck(vertices: Words, excited: Words) -> int:

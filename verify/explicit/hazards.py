@@ -56,7 +56,8 @@ def flickering(graph: Graph, watch: Watch) -> Words:
 def shortest_flicker(graph: Graph, watch: Watch, bad: int) -> tuple[list[int], str] | None:
     """The shortest run (as indices) up to the second change of one of the signals in the packed set `bad`."""
     tagged = Tagged(graph, watch, [i for i in range(len(watch.signals)) if bad >> i & 1])
-    search = Search(tagged.bits, tagged.steps, None, graph.limits, tagged.flagged).run(tagged.sources())
+    moves = Search(tagged.bits, graph.packed.input_mask, tagged.steps, graph.limits, tagged.flagged)
+    search = moves.run(tagged.sources())
     if search.hit is None:
         return None
     path = search.path(*search.hit)
