@@ -33,6 +33,7 @@ class Kind:
     * `standard`: whether it is asked when a file asks nothing itself, and at which place.
     * `anywhere`: its runs may begin outside the start states.
     * `compares_winners`: a refutation says whether simultaneous switching is needed for it.
+    * `vacuous`: why there was nothing to range over, when that is so.
     """
 
     name: str
@@ -43,6 +44,7 @@ class Kind:
     standard: int | None = None
     anywhere: bool = False
     compares_winners: bool = False
+    vacuous: str = "no reachable stable total state has an allowed input change"
 
 
 @cache

@@ -36,4 +36,5 @@ def offends(behaviour: Behaviour, question: Reaches, answer: Answer) -> tuple[st
     return f"A {sort}total state is reachable in which {to_text(question.bad)} is true.", {}
 
 
-KIND = Kind("always", Shape(required={"expr"}, optional={"when"}), _question, _claim, offends)
+VACUOUS = "no stable total state is reachable"
+KIND = Kind("always", Shape(required={"expr"}, optional={"when"}), _question, _claim, offends, vacuous=VACUOUS)

@@ -6,7 +6,7 @@ from settled.models.circuit import Circuit
 from settled.models.logic import to_text
 from settled.models.specification import Shape
 from settled.verify.properties import Kind, Options
-from settled.verify.properties.always import offends, where
+from settled.verify.properties.always import VACUOUS, offends, where
 from settled.verify.questions import Reaches
 
 
@@ -18,4 +18,4 @@ def _claim(_: Circuit, options: Options) -> str:
     return f"{to_text(options['expr'])} is false in {where(options)}."
 
 
-KIND = Kind("never", Shape(required={"expr"}, optional={"when"}), _question, _claim, offends)
+KIND = Kind("never", Shape(required={"expr"}, optional={"when"}), _question, _claim, offends, vacuous=VACUOUS)

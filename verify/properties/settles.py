@@ -36,4 +36,13 @@ def _offends(behaviour: Behaviour, _: Oscillates, answer: Answer) -> tuple[str, 
     return f"The circuit can go round for ever with its inputs held: {shown} never come to rest.", {}
 
 
-KIND = Kind("settles", Shape(), _question, _claim, _offends, standard=2, compares_winners=True)
+KIND = Kind(
+    "settles",
+    Shape(),
+    _question,
+    _claim,
+    _offends,
+    standard=2,
+    compares_winners=True,
+    vacuous="no reachable total state is unstable, and no reachable stable one has an allowed input change",
+)
