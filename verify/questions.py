@@ -61,6 +61,16 @@ class DivergesAfterThree(Question):
 
 
 @dataclass(frozen=True)
+class Withdraws(Question):
+    """Can a step or an input change take away the excitation of a node that does not itself switch?
+
+    Nodes in `excepted` do not count. False of exactly the semi-modular circuits (Muller 1959, recalled).
+    """
+
+    excepted: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
 class Answer:
     """What an engine found.
 
