@@ -7,10 +7,10 @@ is judged in `oracle_traces`.
 from __future__ import annotations
 
 import heapq
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Hashable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from itertools import count, permutations
-from typing import Any
+from typing import Any, TypeVar
 
 from oracle_world import Schedule, Situation, State, Unaskable, World, components, reach
 
@@ -20,6 +20,7 @@ from settled.models.logic import Expr, topological
 
 Options = Mapping[str, Any]
 Distance = tuple[int, int]
+V = TypeVar("V", bound=Hashable)
 FUNDAMENTAL_ONLY = ("race-free", "hazard-free", "essential-hazard-free", "equivalent")
 
 
@@ -122,18 +123,22 @@ def race_free(world: World, _options: Options) -> Verdict:
 
 
 def hazard_free(world: World, options: Options) -> Verdict:
-    """In the response to a change each watched signal changes at most once; `hazards` lists all that can be shown."""
+    """In the response to a change each watched signal changes at most once; `hazards` lists all that can be shown.
+
+    `shortest` leads to the offending change.
+    """
     watched = options.get("signals", world.circuit.outputs)
     if not watched:
         raise Unaskable("nothing to watch")
     found = set(hazards(world, watched))
-    return verdict_of(not found, not exercised(world), hazards=found, ranged=ranged(world))
+    shortest = shortest_hazard(world, watched) if found else None
+    return verdict_of(not found, not exercised(world), shortest, hazards=found, ranged=ranged(world))
 
 
 Hazard = tuple[str, str | None, str | None]
 
 
-def hazards(world: World, watched: list[str]) -> Iterator[Hazard]:
+def hazards(world: World, watched: Sequence[str]) -> Iterator[Hazard]:
     """Signal, class and kind of each hazard that some run shows."""
     for state in resting(world):
         for change, schedules in world.changes(state).items():
@@ -144,8 +149,8 @@ def hazards(world: World, watched: list[str]) -> Iterator[Hazard]:
                         yield name, label, kind
 
 
-def second_changes(world: World, state: State, schedules: set[Schedule], name: str) -> set[Situation]:
-    """The situations right after the second change of a signal in a response."""
+def second_changes(world: World, state: State, schedules: set[Schedule], name: str) -> dict[Situation, Distance]:
+    """The situations right after the second change of a signal in a response, with the way there from `state`."""
 
     def after(at: tuple[Situation, int]) -> Iterator[tuple[Situation, int]]:
         situation, changes = at
@@ -153,8 +158,21 @@ def second_changes(world: World, state: State, schedules: set[Schedule], name: s
             yield s, changes + (world.signal(name, s.state) != world.signal(name, situation.state))
 
     begun = {world.begin(state, schedule) for schedule in schedules}
-    starts = {(s, int(world.signal(name, s.state) != world.signal(name, state))) for s in begun}
-    return {s for s, changes in reach(starts, after) if changes == 2}
+    starts = {(s, int(world.signal(name, s.state) != world.signal(name, state))): (1, 1) for s in begun}
+    found = cheapest(starts, after, lambda a, b: moved(world, a[0], b[0]))
+    return {s: far for (s, changes), far in found.items() if changes == 2}
+
+
+def shortest_hazard(world: World, watched: Sequence[str]) -> Distance:
+    """The fewest (steps in which an input switches, steps) up to the second change of a watched signal."""
+    far = distances(world)
+    return min(
+        (far[Situation(state)][0] + more[0], far[Situation(state)][1] + more[1])
+        for state in resting(world)
+        for schedules in world.changes(state).values()
+        for name in watched
+        for more in second_changes(world, state, schedules, name).values()
+    )
 
 
 def hazard_classes(world: World, state: State, offending: Situation, name: str) -> set[str | None]:
@@ -226,20 +244,27 @@ def rows_after(world: World, state: State, x: str) -> set[State]:
 
 def distances(world: World) -> dict[Situation, Distance]:
     """For each reachable situation the fewest (steps in which an input switches, steps) that lead there."""
-    best: dict[Situation, Distance] = {}
+    return cheapest({Situation(s): (0, 0) for s in world.starts()}, world.moves, lambda a, b: moved(world, a, b))
+
+
+def cheapest(
+    starts: Mapping[V, Distance], after: Callable[[V], Iterable[V]], cost: Callable[[V, V], int]
+) -> dict[V, Distance]:
+    """The least (costs, moves) that lead to each vertex, counted on from what the starts have."""
+    best: dict[V, Distance] = {}
     number = count()
-    queue = [(0, 0, next(number), Situation(s)) for s in world.starts()]
+    queue = [(*far, next(number), v) for v, far in starts.items()]
     heapq.heapify(queue)
     while queue:
-        changes, steps, _, at = heapq.heappop(queue)
-        if at not in best:
-            best[at] = changes, steps
-            for after in world.moves(at):
-                heapq.heappush(queue, (changes + input_moves(world, at, after), steps + 1, next(number), after))
+        costs, moves, _, v = heapq.heappop(queue)
+        if v not in best:
+            best[v] = costs, moves
+            for w in after(v):
+                heapq.heappush(queue, (costs + cost(v, w), moves + 1, next(number), w))
     return best
 
 
-def input_moves(world: World, at: Situation, after: Situation) -> int:
+def moved(world: World, at: Situation, after: Situation) -> int:
     """1 if some input switches on the way, else 0."""
     return int(world.inputs(at.state) != world.inputs(after.state))
 
@@ -272,7 +297,7 @@ def speed_independent(world: World, options: Options) -> Verdict:
 
     found = [(at, after) for at in world.reachable for after in world.moves(at) if robs(at, after)]
     far = distances(world) if found else {}
-    costs = [(far[at][0] + input_moves(world, at, after), far[at][1] + 1) for at, after in found]
+    costs = [(far[at][0] + moved(world, at, after), far[at][1] + 1) for at, after in found]
     return verdict_of(not found, shortest=min(costs, default=None))
 
 

@@ -97,6 +97,7 @@ class World:
     def __init__(self, circuit: Circuit, environment: Environment) -> None:
         self.circuit, self.environment = circuit, environment
         self.excited = cache(self._excited)
+        self.admits = cache(self._admits)
         self.willing = cache(self._willing)
         self.schedules = cache(self._schedules)
         self.respond = cache(self._respond)
@@ -151,7 +152,7 @@ class World:
         """The inputs that are 1: the input vector."""
         return state & frozenset(self.circuit.inputs)
 
-    def admits(self, state: State) -> bool:
+    def _admits(self, state: State) -> bool:
         """Whether the input vector satisfies `assume`."""
         return all(self.value(e, state) for e in self.environment.assume)
 
