@@ -343,16 +343,16 @@ def test_a_burst_visits_no_total_state_that_it_could_not_stop_in() -> None:
 @pytest.mark.parametrize("check", ["settles", "race-free", "hazard-free", "speed-independent", "essential-hazard-free"])
 def test_what_fails_with_fewer_runs_fails_with_more(check: str) -> None:
     """One winner against any; single changes against simultaneous ones and bursts."""
-    fewer = Counter[str]()
-    for seed in range(40):
+    refuted = 0
+    for seed in range(60):
         plain, environment = random_case(seed, mode="fundamental", changes="single", winners="one", styles=RACY)
         if decide(plain, environment, check, {}).verdict == "refuted":
-            fewer[check] += 1
+            refuted += 1
             assert decide(replace(plain, winners="any"), environment, check, {}).verdict == "refuted"
             for changes in ("simultaneous", "burst"):
                 more = replace(environment, changes=changes)
                 assert decide(plain, more, check, {}).verdict == "refuted"
-    assert fewer[check] >= 3
+    assert refuted >= 3
 
 
 def test_a_circuit_that_settles_and_does_not_race_is_equivalent_to_itself() -> None:
