@@ -71,6 +71,22 @@ class Withdraws(Question):
 
 
 @dataclass(frozen=True)
+class Deadlocks(Question):
+    """Is a total state reachable in which no node is excited and no input may change (`assume` and guards allowing)?"""
+
+
+@dataclass(frozen=True)
+class Evades(Question):
+    """Can a fair run from a reachable total state in which `source` is true go on or end without `target`?
+
+    Changes of the environment are part of the run; what must not wait for ever is in the semantics of `must`.
+    """
+
+    source: Expr
+    target: Expr
+
+
+@dataclass(frozen=True)
 class Answer:
     """What an engine found.
 
