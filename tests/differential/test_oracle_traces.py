@@ -123,3 +123,31 @@ def test_runs_that_show_a_difference() -> None:
     crossed = [trace(one, left), trace(other, states("", "r", "r s", "r s q"))]
     assert offending_pair(one, other, start, None, crossed) == "the runs do not go through the same changes"
     assert offending_pair(one, one, start, None, [trace(one, left)] * 2) == "both start states have good partners"
+
+
+def test_a_side_that_does_not_settle_and_a_start_state_without_partner() -> None:
+    hold, ring = replace(circuit("a", "q", q="q"), name="hold"), circuit("a", "q", q="a & ~q")
+    low, high = Environment(start={"a": 0, "q": 0}), Environment(start={"a": 1, "q": 0})
+    left = trace(hold, states("", "a"))
+    assert offending_pair(hold, ring, low, None, [left, trace(ring, states("", "a", "a q"), 1)]) is None
+    assert offending_pair(hold, ring, low, None, [left, trace(ring, states("", "a", "a q"))])
+    assert offending_pair(hold, ring, high, None, [trace(hold, states("a"))]) is None
+    assert offending_pair(hold, ring, low, None, [trace(hold, states(""))]) == "the start state has partners"
+
+
+def test_a_lasso_that_avoids_the_goal_is_fair() -> None:
+    goal = {"from": var("en"), "to": expression("~en")}
+    assert offending(RING, SINGLE, "leads-to", goal, [trace(RING, LASSO, 1)]) is None
+    late = {"from": var("en"), "to": var("y")}
+    assert offending(RING, SINGLE, "leads-to", late, [trace(RING, LASSO, 1)]) == "`to` is true afterwards"
+    wish = {"from": var("d"), "to": var("q")}
+    again = trace(FOLLOWER, states("", "d", "d g"), 1)
+    assert offending(FOLLOWER, free_start("d g q"), "leads-to", wish, [again]) is None
+    wire = circuit("a b", "q", q="a")
+    held = trace(wire, states("", "a", "a b"), 1)
+    stuck = offending(wire, free_start("a b q"), "leads-to", {"from": var("a"), "to": var("q")}, [held])
+    assert stuck == "the loop is not fair"
+
+
+def free_start(names: str) -> Environment:
+    return Environment(mode="input-output", start=dict.fromkeys(names.split(), 0))
