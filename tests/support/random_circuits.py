@@ -143,6 +143,18 @@ def divider(rng: Random, inputs: str, nodes: str) -> Excitation:
     return made
 
 
+def standoff(rng: Random, inputs: str, nodes: str) -> Excitation:
+    """Two nodes that hold each other when they rise together; the first to rise alone hands over to a third."""
+    made = rng.choice((tables, pieces))(rng, inputs, nodes)
+    if inputs and len(nodes) > 2:
+        one, two, third = rng.sample(nodes, 3)
+        p, q, w, x = map(var, (one, two, third, rng.choice(inputs)))
+        made[one] = and_(x, not_(w), or_(not_(q), p))
+        made[two] = and_(x, not_(w), or_(not_(p), q))
+        made[third] = and_(x, or_(xor(p, q), w))
+    return made
+
+
 def reset(rng: Random, inputs: str, nodes: str) -> Excitation:
     """One of the other styles, each node cleared or preset by the first input."""
     made = rng.choice((tables, pieces, mixed))(rng, inputs, nodes)
@@ -152,7 +164,7 @@ def reset(rng: Random, inputs: str, nodes: str) -> Excitation:
 
 Style = Callable[[Random, str, str], Excitation]
 STYLES: tuple[Style, ...] = (tables, forward, pieces, pieces, mixed, reset)
-RACY: tuple[Style, ...] = (tables, rivals, rivals, divider, pieces, mixed)
+RACY: tuple[Style, ...] = (tables, rivals, rivals, divider, standoff, pieces, mixed)
 
 
 def random_circuit(
