@@ -22,6 +22,7 @@ Bits = npt.NDArray[np.bool_]
 Places = npt.NDArray[np.int64]
 
 WIDTH = 63
+BURST_INPUTS = 12
 
 
 class TooWide(Exception):
@@ -40,6 +41,8 @@ class Packed:
         self.bits = self.state_bits + (self.inputs if self.burst else 0)
         if self.bits > WIDTH:
             raise TooWide(f"{self.bits} bits a total state; at most {WIDTH} fit")
+        if self.burst and environment.assume and self.inputs > BURST_INPUTS:
+            raise TooWide(f"bursts of {self.inputs} inputs under assumptions; at most {BURST_INPUTS} inputs fit")
         self.input_mask = np.uint64((1 << self.inputs) - 1)
         self.state_mask = np.uint64((1 << self.state_bits) - 1)
         self._excited = Program([circuit.is_excited[n] for n in circuit.nodes])
@@ -150,9 +153,10 @@ class Packed:
 
     def _finishing(self, vertices: Words) -> Bits:
         """Whether the vector is admitted and what is outstanding can follow with every vector admitted."""
-        if self.environment.assume:
-            return self._finishable[self.outstanding(vertices).astype(np.int64), (vertices & self.input_mask).astype(np.int64)]
-        return np.ones(len(vertices), bool)
+        if not self.environment.assume:
+            return np.ones(len(vertices), bool)
+        rest = self.outstanding(vertices).astype(np.int64)
+        return self._finishable[rest, (vertices & self.input_mask).astype(np.int64)]
 
     @cached_property
     def _finishable(self) -> npt.NDArray[np.bool_]:

@@ -232,7 +232,8 @@ def to_text(e: Expr) -> str:
             leaf = {"var": escape(e.name), "stable": "stable", "excited": f"excited({escape(e.name)})"}
             return leaf.get(e.op, e.name), 5
         own = _STRENGTH[e.op]
-        inner = [text if strength > own or (e.op == "not" and strength >= own) else f"({text})" for text, strength in args]
+        least = own if e.op == "not" else own + 1
+        inner = [text if strength >= least else f"({text})" for text, strength in args]
         if e.op == "not":
             return "~" + inner[0], own
         return (f"{inner[0]} ? {inner[1]} : {inner[2]}" if e.op == "ite" else _SIGN[e.op].join(inner)), own

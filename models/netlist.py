@@ -20,7 +20,7 @@ class Delay:
 
 @dataclass(frozen=True, slots=True)
 class Gate:
-    """One gate: the net it drives and the function it computes of other nets (its own output included, if it latches)."""
+    """One gate: the net it drives and the function it computes of other nets (and of its own output, if it latches)."""
 
     name: str
     function: Expr

@@ -100,7 +100,8 @@ class Behaviour:
         found = []
         for i, name in enumerate(self.circuit.inputs):
             guard = self.environment.guard(name)
-            found.append((1 << i, *self.circuit.resolve(guard.rises, guard.falls)))
+            rises, falls = self.circuit.resolve(guard.rises, guard.falls)
+            found.append((1 << i, rises, falls))
         return found
 
     def _admits(self, vector: int) -> bool:

@@ -160,9 +160,8 @@ def check_inputs(spec: Specification, circuit: Circuit, properties: Sequence[Pro
 
     environment = spec.environment
     if environment.assume and not satisfiable(circuit, environment.assume):
-        raise InputError(
-            Problem("impossible-assume", "no input vector satisfies `assume`", spec.spans.get("assume"), "the assumptions")
-        )
+        where = spec.spans.get("assume")
+        raise InputError(Problem("impossible-assume", "no input vector satisfies `assume`", where, "the assumptions"))
     needed = [p for p in properties if p.check not in WITHOUT_START]
     if needed and not satisfiable(circuit, start_conditions(circuit, environment)):
         kind = "stable total state" if environment.mode == "fundamental" else "total state"

@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from settled.models.circuit import Circuit, loops
-from settled.models.environment import Environment
-from settled.models.logic import TRUE, to_text
+from settled.models.environment import Environment, Guard
+from settled.models.logic import TRUE, support, to_text
 from settled.models.specification import CircuitSource
 
 MODELS = {
@@ -21,19 +21,23 @@ CHANGES = {
 }
 
 
+WINNERS = {"any": "any (excited nodes may switch together)", "one": "one (excited nodes switch one at a time)"}
+
+
 def understood(source: CircuitSource, circuit: Circuit, environment: Environment) -> tuple[tuple[str, str], ...]:
     """Lines of the echo: what each is about, and what was understood."""
     found = loops(circuit.nodes, circuit.excitation)
-    memory = [n for n in circuit.nodes if [n] in found or n in circuit.excitation and _reads_itself(circuit, n)]
+    memory = [n for n in circuit.nodes if n in support(circuit.excitation[n])]
+    what = "excitation" if source.netlist.equations else "gate"
     lines = [
-        ("circuit", f"{circuit.name}: {_count(len(source.netlist.gates), 'excitation' if source.netlist.equations else 'gate')}"),
+        ("circuit", f"{circuit.name}: {_count(len(source.netlist.gates), what)}"),
         ("inputs", _names(circuit.inputs)),
         ("nodes", _names(circuit.nodes)),
         ("outputs", _names(circuit.outputs)),
         ("loops", "; ".join(_names(part, 8) for part in found) or "none: the circuit has no feedback"),
-        *([("storage", f"in one node: {_names(memory, 8)}")] if memory else []),
+        *([("storage", f"nodes that read themselves: {_names(memory, 8)}")] if memory else []),
         ("delay model", MODELS[circuit.delay]),
-        ("winners", f"{circuit.winners} ({'any excited nodes may switch together' if circuit.winners == 'any' else 'one node at a time'})"),
+        ("winners", WINNERS[circuit.winners]),
         ("environment", _mode(environment)),
         ("assumed", "; ".join(to_text(e) for e in environment.assume) or "nothing about the inputs"),
         *[("guard", text) for text in _guards(circuit, environment)],
@@ -41,12 +45,6 @@ def understood(source: CircuitSource, circuit: Circuit, environment: Environment
         *[("note", note) for note in circuit.notes],
     ]
     return tuple(lines)
-
-
-def _reads_itself(circuit: Circuit, node: str) -> bool:
-    from settled.models.logic import support
-
-    return node in support(circuit.excitation[node])
 
 
 def _names(names: Sequence[str], most: int = 24) -> str:
@@ -66,13 +64,13 @@ def _mode(environment: Environment) -> str:
 
 
 def _guards(circuit: Circuit, environment: Environment) -> list[str]:
-    lines = []
-    for name in circuit.inputs:
-        guard = environment.guards.get(name)
-        if guard is not None:
-            when = [f"{name}{sign} when {to_text(e)}" for sign, e in (("+", guard.rises), ("-", guard.falls)) if e is not TRUE]
-            lines.append(", ".join(when or [f"{name} at any time"]) + ("; must" if guard.must else ""))
-    return lines
+    return [_guard(name, environment.guards[name]) for name in circuit.inputs if name in environment.guards]
+
+
+def _guard(name: str, guard: Guard) -> str:
+    edges = ((f"{name}+", guard.rises), (f"{name}-", guard.falls))
+    when = [f"{edge} when {to_text(e)}" for edge, e in edges if e is not TRUE]
+    return ", ".join(when or [f"{name} at any time"]) + ("; must not wait for ever" if guard.must else "")
 
 
 def _start(environment: Environment) -> str:

@@ -57,7 +57,7 @@ def connection(source: str, reader: str) -> str:
 def closed_cells(netlist: Netlist, placement: Placement) -> dict[str, tuple[str, ...]]:
     """The closed cells in force, by name: those of the netlist and those that `closed` asks for."""
     cells = dict(netlist.cells)
-    instance = {groups[0]: name for name, groups in reversed(netlist.groups.items()) if len(groups) == 1}
+    instance = {groups[0]: name for name, groups in reversed(list(netlist.groups.items())) if len(groups) == 1}
     for name in placement.closed:
         for group in netlist.groups[name]:
             taken = {gate for members in cells.values() for gate in members}

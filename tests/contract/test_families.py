@@ -53,7 +53,7 @@ def test_an_engine_answers_questions(engine: Engine) -> None:
 @pytest.mark.parametrize("name", delays.names())
 def test_a_delay_model_is_named_like_its_file_and_places_a_latch(name: str) -> None:
     module = import_module(f"settled.encodings.delays.{name}")
-    assert module.DELAY == name and module.__doc__
+    assert name == module.DELAY and module.__doc__
     latch = Netlist("latch", ("d",), (Gate("q", var("d")),), ("q",))
     circuit = delays.place(latch, name)
     assert circuit.delay == name and circuit.outputs == ("q",)

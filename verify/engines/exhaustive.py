@@ -18,16 +18,21 @@ from settled.verify.explicit.changes_thrice import ThreeChanges
 from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.hazards import Watch, flickering, shortest_flicker
 from settled.verify.explicit.oscillations import shortest_lasso
+from settled.verify.explicit.progress import dead_ends, shortest_evasion
 from settled.verify.explicit.races import nearest_ends, run_to, shortest_race
+from settled.verify.explicit.withdrawals import shortest_withdrawal
 from settled.verify.limits import LimitReached
 from settled.verify.questions import (
     Answer,
+    Deadlocks,
     Diverges,
     DivergesAfterThree,
+    Evades,
     Flickers,
     Oscillates,
     Reaches,
     Task,
+    Withdraws,
     undecided,
 )
 
@@ -98,8 +103,13 @@ def _changes(graph: Graph) -> int:
 
 def run(graph: Graph, title: str, path: Sequence[int], loop: int | None = None) -> Run:
     """The run through the vertices at `path`."""
-    states = (graph.vertices[np.array(path, np.int64)] & graph.packed.state_mask).tolist()
-    return Run(title, tuple(states), loop, graph.packed.circuit.name)
+    return walked(graph, title, graph.vertices[np.array(path, np.int64)].tolist(), loop)
+
+
+def walked(graph: Graph, title: str, words: Sequence[int], loop: int | None = None) -> Run:
+    """The run through these vertices."""
+    mask = int(graph.packed.state_mask)
+    return Run(title, tuple(v & mask for v in words), loop, graph.packed.circuit.name)
 
 
 def proved(graph: Graph, exercised: bool) -> Answer:
@@ -144,14 +154,15 @@ def diverges(task: Task, _: Diverges) -> Answer:
     found = shortest_race(graph)
     if found is None:
         return proved(graph, len(graph.change_edges.source) > 0)
-    return refuted(graph, [run(graph, f"{word} ordering", path) for word, path in zip(("one", "another"), found, strict=True)])
+    titles = ("one ordering", "another ordering")
+    return refuted(graph, [run(graph, title, path) for title, path in zip(titles, found, strict=True)])
 
 
 def flickers(task: Task, question: Flickers) -> Answer:
     """Look for a signal that changes twice in one response."""
     graph = explored(task)
     watch = Watch(graph, question.signals)
-    bad = int(flickering(graph, watch))
+    bad = flickering(graph, watch)
     if not bad:
         return proved(graph, len(graph.change_edges.source) > 0)
     found = shortest_flicker(graph, watch, bad)
@@ -172,10 +183,33 @@ def diverges_after_three(task: Task, _: DivergesAfterThree) -> Answer:
     if found is None:
         return proved(graph, bool(three.after))
     first, second, bit = found
-    changes = [int(graph.end[v]) for v in second]
-    titles = ("after one change", "after three changes" if sum(changes) - sum(int(graph.end[v]) for v in first) else "another ordering after one change")
-    runs = [run(graph, title, path) for title, path in zip(titles, (first, second), strict=True)]
+    rests = [int(graph.end[path].sum()) for path in (first, second)]
+    other = "after one change, another ordering" if rests[0] == rests[1] else "after three changes"
+    runs = [run(graph, title, path) for title, path in (("after one change", first), (other, second))]
     return refuted(graph, runs, {"input": task.circuit.inputs[bit.bit_length() - 1]})
+
+
+def withdraws(task: Task, question: Withdraws) -> Answer:
+    """Look for a step that takes away an excitation."""
+    graph = explored(task)
+    found = shortest_withdrawal(graph, question.excepted)
+    return proved(graph, True) if found is None else refuted(graph, [walked(graph, "the run to it", found)])
+
+
+def deadlocks(task: Task, _: Deadlocks) -> Answer:
+    """Look for a dead end."""
+    graph = explored(task)
+    found = graph.earliest(dead_ends(graph))
+    return refuted(graph, [run(graph, "the run to it", graph.path_to(int(found[0])))]) if len(found) else proved(graph, True)
+
+
+def evades(task: Task, question: Evades) -> Answer:
+    """Look for a fair run that evades a goal."""
+    graph = explored(task)
+    found = shortest_evasion(graph, question.source, question.target)
+    if found is None:
+        return proved(graph, bool(graph.packed.holds([question.source], graph.vertices).any()))
+    return refuted(graph, [run(graph, "the run without the goal", *found)])
 
 
 ENGINE = Engine(
@@ -187,6 +221,9 @@ ENGINE = Engine(
         Diverges: diverges,
         Flickers: flickers,
         DivergesAfterThree: diverges_after_three,
+        Withdraws: withdraws,
+        Deadlocks: deadlocks,
+        Evades: evades,
     },
 )
 

@@ -41,7 +41,8 @@ def count(task: Task, question: StableCount) -> Answer:
 
 def _refuted(task: Task, vector: int, question: StableCount) -> Answer:
     found = list(_stable_under(task, vector, max(question.least, (question.most or 0) + 1)))
-    facts = {"vector": {x: vector >> i & 1 for i, x in enumerate(task.circuit.inputs)}, "stable_internal_states": len(found)}
+    values = {x: vector >> i & 1 for i, x in enumerate(task.circuit.inputs)}
+    facts = {"vector": values, "stable_internal_states": len(found)}
     if found:
         runs = tuple(Run(f"stable state {i}", (s,), None, task.circuit.name) for i, s in enumerate(found, 1))
     else:
@@ -77,10 +78,7 @@ def stable_with(circuit: Circuit, state: int) -> Expr:
 def _stable_under(task: Task, vector: int, most: int) -> Iterator[int]:
     """Up to `most` stable total states with this input vector."""
     circuit = task.circuit
-    query = task.memory.setdefault("stable query", Query())
-    copy: Clauses = task.memory.setdefault("stable copy", query.clauses())
-    if "stable" not in task.memory:
-        task.memory["stable"] = copy.require(circuit.is_stable) or True
+    query, copy = _stable_copy(task)
     inputs = [copy.variable(x) if vector >> i & 1 else -copy.variable(x) for i, x in enumerate(circuit.inputs)]
     nodes = [copy.variable(n) for n in circuit.nodes]
     round_of = query.fresh()
@@ -91,6 +89,17 @@ def _stable_under(task: Task, vector: int, most: int) -> Iterator[int]:
         yield vector | sum(1 << circuit.place[n] for n, v in zip(circuit.nodes, nodes, strict=True) if v in model)
         query.solver.add_clause([-round_of, *(-v if v in model else v for v in nodes)])
     query.solver.add_clause([-round_of])
+
+
+def _stable_copy(task: Task) -> tuple[Query, Clauses]:
+    """The solver that knows when the circuit is stable, set up once a task."""
+    if "stable" not in task.memory:
+        query = Query()
+        copy = query.clauses()
+        copy.require(task.circuit.is_stable)
+        task.memory["stable"] = query, copy
+    found: tuple[Query, Clauses] = task.memory["stable"]
+    return found
 
 
 def too_many(task: Task, most: int) -> int | None:

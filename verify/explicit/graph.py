@@ -111,7 +111,7 @@ class Search:
                     waiting.setdefault(after, []).append(np.unique(found))
         return self
 
-    def changed(self, before: Words, after: Words) -> Bits:
+    def changed(self, before: Words, after: Words | np.uint64) -> Bits:
         """Whether an input changes in each move."""
         return (before ^ after) & self.inputs != 0
 
@@ -140,16 +140,16 @@ class Graph:
     """All reachable vertices of a circuit in its environment (see `Packed` for what a vertex is).
 
     `vertices` is sorted; `excited`, `key` (round, steps) and `end` (stable, nothing outstanding) run beside it.
-    When a limit ended the search, `unfinished` says which; the vertices found are reachable all the same, so that
-    whatever is found wrong among them is wrong.
+    `sources`: where runs begin (default: the start states). When a limit ended the search, `unfinished` says which;
+    the vertices found are reachable all the same, so that whatever is found wrong among them is wrong.
     """
 
-    def __init__(self, packed: Packed, limits: Limits) -> None:
+    def __init__(self, packed: Packed, limits: Limits, sources: Words | None = None) -> None:
         self.packed, self.limits = packed, limits
         self.search = Search(packed.bits, packed.input_mask, self.moves, limits)
         self.unfinished: str | None = None
         try:
-            self.search.run({(0, 0): starts(packed, limits)})
+            self.search.run({(0, 0): starts(packed, limits) if sources is None else sources})
         except LimitReached as reached:
             self.unfinished = str(reached)
         keys = list(self.search.layers)

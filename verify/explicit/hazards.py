@@ -9,7 +9,7 @@ from __future__ import annotations
 import numpy as np
 
 from settled.encodings.packed import Bits, Places, Words
-from settled.models.logic import Program, var
+from settled.models.logic import Program
 from settled.verify.explicit.graph import Graph, Key, Search
 
 ONE = np.uint64(1)
@@ -21,14 +21,14 @@ class Watch:
     def __init__(self, graph: Graph, signals: tuple[str, ...]) -> None:
         circuit = graph.packed.circuit
         self.graph, self.signals = graph, signals
-        self.program = Program(circuit.resolve(*(circuit.signal(s) if s in circuit.defined else var(s) for s in signals)))
+        self.program = Program(circuit.resolve(*map(circuit.signal, signals)))
 
     def __call__(self, vertices: Words) -> Words:
         packed = self.graph.packed
         return packed.mask(packed.values(self.program, vertices), vertices)
 
 
-def flickering(graph: Graph, watch: Watch) -> Words:
+def flickering(graph: Graph, watch: Watch) -> int:
     """The packed set of watched signals that change twice or more in some response.
 
     Spreads, along the edges of all responses at once, which values each signal may have had before the change.
@@ -50,7 +50,7 @@ def flickering(graph: Graph, watch: Watch) -> Words:
             fresh = np.union1d(fresh, target[had[tag][target] != old])
         source, target = graph.step_edges.out_of(fresh[~graph.end[fresh]])
         now = [had[0][source], had[1][source]]
-    return bad & np.uint64((1 << len(watch.signals)) - 1)
+    return int(bad) & (1 << len(watch.signals)) - 1
 
 
 def shortest_flicker(graph: Graph, watch: Watch, bad: int) -> tuple[list[int], str] | None:

@@ -6,7 +6,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from settled.verify.explicit.graph import MANY, NONE, Edges, Graph, Places
+from settled.encodings.packed import Places
+from settled.verify.explicit.graph import MANY, NONE, Edges, Graph
 
 FAR = np.int64(1) << 40
 

@@ -92,6 +92,5 @@ def _settled_value(circuit: Circuit, signal: Expr, vector: int) -> int:
     return value(circuit, [signal], state)[0]
 
 
-KIND = Kind(
-    "hazard-free", Shape(optional={"signals"}, mode="fundamental", watches=True), _question, _claim, _offends, standard=4
-)
+SHAPE = Shape(optional={"signals"}, mode="fundamental", watches=True)
+KIND = Kind("hazard-free", SHAPE, _question, _claim, _offends, standard=4)

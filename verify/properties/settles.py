@@ -17,7 +17,7 @@ def _question(_: Circuit, __: Options) -> Question:
 
 
 def _claim(_: Circuit, __: Options) -> str:
-    return "From every reachable total state, with the inputs held from there on, every fair run reaches a stable total state."
+    return "From every reachable total state, with the inputs held, every fair run reaches a stable total state."
 
 
 def _offends(behaviour: Behaviour, _: Oscillates, answer: Answer) -> tuple[str, dict[str, Any]]:

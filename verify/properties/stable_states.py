@@ -19,7 +19,8 @@ def _question(_: Circuit, options: Options) -> StableCount:
 def _claim(_: Circuit, options: Options) -> str:
     least, most = options.get("at-least", 1), options.get("at-most")
     bound = f"at least {least}" if most is None else f"{least}" if least == most else f"between {least} and {most}"
-    return f"Every input vector has {bound} stable internal state{'s' if bound != 'at least 1' and bound != '1' else ''}."
+    noun = "state" if bound in ("1", "at least 1") else "states"
+    return f"Every input vector has {bound} stable internal {noun}."
 
 
 def _offends(behaviour: Behaviour, question: StableCount, answer: Answer) -> tuple[str, dict[str, Any]]:
@@ -43,4 +44,5 @@ def _offends(behaviour: Behaviour, question: StableCount, answer: Answer) -> tup
     return f"The input vector {text} has {number}{more} stable internal states.", {}
 
 
-KIND = Kind("stable-states", Shape(optional={"at-least", "at-most"}), _question, _claim, _offends, standard=1, anywhere=True)
+SHAPE = Shape(optional={"at-least", "at-most"})
+KIND = Kind("stable-states", SHAPE, _question, _claim, _offends, standard=1, anywhere=True)
