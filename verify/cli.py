@@ -1,0 +1,234 @@
+"""The command line. Heavy modules are imported inside the commands, so that help comes at once."""
+
+from __future__ import annotations
+
+import math
+import os
+import sys
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+if TYPE_CHECKING:
+    from settled.models.problems import Problem
+    from settled.verify.result import FileReport, Result
+    from settled.verify.session import Session, Settings
+    from settled.verify.terminal import Screen
+
+BAD_INPUT, INTERNAL, INTERRUPTED = 2, 70, 130
+
+app = typer.Typer(
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
+
+
+def _version(asked: bool) -> None:
+    if asked:
+        from importlib.metadata import version
+
+        typer.echo(f"settled {version('settled')}")
+        raise typer.Exit
+
+
+@app.callback()
+def root(
+    version: Annotated[bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")] = False,
+) -> None:
+    """Prove or refute properties of clockless (asynchronous) sequential circuits.
+
+    \b
+    Exit status: 0 all proved; 1 at least one refuted; 3 none refuted, at least one
+    undecided or vacuous; 2 input or usage error; 70 internal error; 130 interrupted.
+    """
+
+
+def _seconds(value: float) -> float:
+    if not (math.isfinite(value) and value > 0):
+        raise typer.BadParameter("a number of seconds above 0 is needed")
+    return value
+
+
+def _directory(value: Path | None) -> Path | None:
+    if value is not None:
+        there = next(path for path in (value, *value.absolute().parents) if path.exists())
+        if not there.is_dir() or not os.access(there, os.W_OK):
+            raise typer.BadParameter(f"`{there}` is not a directory that can be written to")
+    return value
+
+
+FILE_HELP = "A property file (.toml), a netlist (.v, .sv), `-` for a property file on standard input, or a gallery name."
+
+
+@app.command()
+def check(
+    files: Annotated[list[str], typer.Argument(metavar="FILE", show_default=False, help=FILE_HELP)],
+    json: Annotated[bool, typer.Option("--json", help="Print the result document and nothing else.")] = False,
+    out: Annotated[
+        Path | None, typer.Option(metavar="DIR", callback=_directory, help="Write result.json and more into DIR.")
+    ] = None,
+    only: Annotated[
+        list[str] | None, typer.Option(metavar="NAME", help="Check only the property of this name; repeatable.")
+    ] = None,
+    seconds: Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Time limit for one property.")] = 60.0,
+    states: Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")] = 4_000_000,
+    allow_vacuous: Annotated[
+        bool, typer.Option("--allow-vacuous", help="A vacuous proof does not change the exit status.")
+    ] = False,
+) -> None:
+    """Check every property of every file.
+
+    A netlist, and a file without properties, is asked: stable-states, settles, race-free,
+    hazard-free on the outputs, essential-hazard-free.
+    """
+    from settled.verify.result import exit_status
+    from settled.verify.session import Settings
+    from settled.verify.terminal import Screen
+
+    screen = Screen(silent=json)
+    settings = Settings(tuple(only or ()), seconds, states, screen.progress)
+    outcome = Outcome()
+    for name in files:
+        if outcome.interrupted:
+            outcome.left_out.append(name)
+        else:
+            _check_file(name, settings, screen, outcome)
+    written = _deliver(outcome, screen, json, out)
+    if outcome.interrupted:
+        raise typer.Exit(INTERRUPTED)
+    if outcome.broke:
+        raise typer.Exit(INTERNAL)
+    raise typer.Exit(exit_status(outcome.reports, outcome.problems, allow_vacuous) if written else BAD_INPUT)
+
+
+@dataclass
+class Outcome:
+    """What has become of the files so far. `left_out`: files that were not begun, or could not be used."""
+
+    reports: list[FileReport] = field(default_factory=list)
+    problems: list[Problem] = field(default_factory=list)
+    left_out: list[str] = field(default_factory=list)
+    broke: bool = False
+    interrupted: bool = False
+
+
+def _check_file(name: str, settings: Settings, screen: Screen, outcome: Outcome) -> None:
+    """Check one file; whatever happens is shown and noted in `outcome`."""
+    from settled.models.problems import InputError
+    from settled.verify.inputs import locate
+    from settled.verify.session import Session, load
+
+    session: Session | None = None
+    results: list[Result] = []
+    text, why = None, ""
+    try:
+        path, text = locate(name)
+        session = Session(load(path, text), settings)
+        _decide(session, results, screen)
+    except InputError as error:
+        why = "its input cannot be used"
+        outcome.problems += error.problems
+        screen.refused(error.problems, {name: text})
+    except KeyboardInterrupt:
+        why, outcome.interrupted = "interrupted", True
+    except BrokenPipeError:
+        raise
+    except Exception as error:
+        why, outcome.broke = "an internal error ended the work on this file", True
+        screen.broke(name, error)
+    if session is None:
+        outcome.left_out.append(name)
+    else:
+        _leave_open(session, results, why, screen)
+        outcome.reports.append(session.report(results))
+
+
+def _decide(session: Session, results: list[Result], screen: Screen) -> None:
+    """Decide property by property, each verdict shown as it comes and put into `results`."""
+    names = [p.name for p in session.properties]
+    screen.opened(session)
+    screen.progress.subject = names[0] if names else ""
+    for result in session.results():
+        results.append(result)
+        screen.decided(session, result)
+        screen.progress.subject = (names + [""])[len(results)]
+
+
+def _leave_open(session: Session, results: list[Result], why: str, screen: Screen) -> None:
+    """Say of the properties without a result that they are undecided, and why."""
+    from settled.verify.properties import kinds
+    from settled.verify.result import Result
+
+    for prop in session.properties[len(results) :]:
+        claim = kinds()[prop.check].claim(session.circuit, prop.options)
+        results.append(Result(prop.name, prop.check, "undecided", claim, "none", 0.0, reason=why))
+        screen.decided(session, results[-1])
+
+
+def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> bool:
+    """The end of the text, the document, the files; whether all could be written."""
+    from settled.verify.renderers import write
+    from settled.verify.renderers.problems import as_json
+    from settled.verify.renderers.result_json import to_text
+    from settled.verify.result import document
+
+    if outcome.reports:
+        screen.closed([r for report in outcome.reports for r in report.results], outcome.left_out)
+    result = document(outcome.reports, as_json(outcome.problems))
+    if json:
+        print(to_text(result), end="", flush=True)
+    try:
+        if out is not None and outcome.reports:
+            write(out, outcome.reports, result)
+    except OSError as error:
+        screen.warn(f"cannot write into {out}: {error.strerror}")
+        return False
+    return True
+
+
+@app.command()
+def table(
+    file: Annotated[str, typer.Argument(metavar="FILE", show_default=False, help=FILE_HELP)],
+    outputs: Annotated[bool, typer.Option("--outputs", help="Print the values of the outputs behind each entry.")] = False,
+) -> None:
+    """Print the transition table of a small circuit.
+
+    Input vectors (of at most 4 inputs) run across in Gray order, internal states (of at most
+    6 nodes) down; each entry is the next internal state, a stable one in parentheses.
+    """
+    from settled.models.problems import InputError
+    from settled.verify.inputs import locate
+    from settled.verify.renderers.table import render
+    from settled.verify.session import check_inputs, load, placed
+    from settled.verify.terminal import Screen, page
+    from settled.verify.transition_table import transition_table
+
+    screen, text = Screen(), None
+    try:
+        path, text = locate(file)
+        spec = load(path, text)
+        circuit = placed(spec.circuit)
+        check_inputs(spec, circuit, ())
+        found = transition_table(circuit, spec.environment)
+        screen.say(render(found, spec.path, spec.title, page(), outputs=outputs))
+    except InputError as error:
+        screen.refused(error.problems, {file: text})
+        raise typer.Exit(BAD_INPUT) from None
+    except BrokenPipeError:
+        raise
+    except Exception as error:
+        screen.broke(file, error)
+        raise typer.Exit(INTERNAL) from None
+
+
+def main() -> None:
+    """The command `settled`."""
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="backslashreplace")
+    app()
