@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 from settled.models.circuit import Circuit
-from settled.models.states import Behaviour, Situation, excited
+from settled.models.components import components
+from settled.models.states import Behaviour, Run, Situation, excited, walk
 
 
 def response(behaviour: Behaviour, states: Sequence[int]) -> set[Situation]:
@@ -61,3 +62,18 @@ def excited_throughout(circuit: Circuit, states: Sequence[int]) -> list[str]:
         now = excited(circuit, state)
         high, low = high & now & state, low & now & ~state
     return [n for n in circuit.nodes if (high | low) >> circuit.place[n] & 1]
+
+
+def rounds(behaviour: Behaviour, run: Run) -> list[list[tuple[int, Situation]]]:
+    """The ways to go round the loop of a run for ever: connected sets of its positions with their situations."""
+    first = run.loop or 0
+    following = [*range(1, len(run.states)), first]
+    todo = [(first, at) for at in walk(behaviour, run)[first]]
+    after: dict[tuple[int, Situation], list[tuple[int, Situation]]] = {}
+    while todo:
+        here = todo.pop()
+        if here not in after:
+            place = following[here[0]]
+            after[here] = [(place, at) for at in behaviour.moves(here[1]) if at.state == run.states[place]]
+            todo += after[here]
+    return [part for part in components(after) if len(part) > 1 or part[0] in after[part[0]]]
