@@ -36,10 +36,11 @@ def _version(asked: bool) -> None:
         raise typer.Exit
 
 
+Version = Annotated[bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")]
+
+
 @app.callback()
-def root(
-    version: Annotated[bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")] = False,
-) -> None:
+def root(version: Version = False) -> None:
     """Prove or refute properties of clockless (asynchronous) sequential circuits.
 
     \b
@@ -62,24 +63,27 @@ def _directory(value: Path | None) -> Path | None:
     return value
 
 
-FILE_HELP = "A property file (.toml), a netlist (.v, .sv), `-` for a property file on standard input, or a gallery name."
+_FILE = "A property file (.toml), a netlist (.v, .sv), `-` (a property file from standard input) or a gallery name."
+File = Annotated[str, typer.Argument(metavar="FILE", show_default=False, help=_FILE)]
+Files = Annotated[list[str], typer.Argument(metavar="FILE", show_default=False, help=_FILE)]
+Json = Annotated[bool, typer.Option("--json", help="Print the result document and nothing else.")]
+Out = Annotated[Path | None, typer.Option(metavar="DIR", callback=_directory, help="Write result.json into DIR.")]
+Only = Annotated[list[str] | None, typer.Option(metavar="NAME", help="Check only the property NAME; repeatable.")]
+Seconds = Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Time limit for one property.")]
+States = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")]
+Allow = Annotated[bool, typer.Option("--allow-vacuous", help="Let a vacuous proof count as any other.")]
+Outputs = Annotated[bool, typer.Option("--outputs", help="Print the values of the outputs behind each entry.")]
 
 
 @app.command()
 def check(
-    files: Annotated[list[str], typer.Argument(metavar="FILE", show_default=False, help=FILE_HELP)],
-    json: Annotated[bool, typer.Option("--json", help="Print the result document and nothing else.")] = False,
-    out: Annotated[
-        Path | None, typer.Option(metavar="DIR", callback=_directory, help="Write result.json and more into DIR.")
-    ] = None,
-    only: Annotated[
-        list[str] | None, typer.Option(metavar="NAME", help="Check only the property of this name; repeatable.")
-    ] = None,
-    seconds: Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Time limit for one property.")] = 60.0,
-    states: Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")] = 4_000_000,
-    allow_vacuous: Annotated[
-        bool, typer.Option("--allow-vacuous", help="A vacuous proof does not change the exit status.")
-    ] = False,
+    files: Files,
+    json: Json = False,
+    out: Out = None,
+    only: Only = None,
+    seconds: Seconds = 60.0,
+    states: States = 4_000_000,
+    allow_vacuous: Allow = False,
 ) -> None:
     """Check every property of every file.
 
@@ -192,10 +196,7 @@ def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> 
 
 
 @app.command()
-def table(
-    file: Annotated[str, typer.Argument(metavar="FILE", show_default=False, help=FILE_HELP)],
-    outputs: Annotated[bool, typer.Option("--outputs", help="Print the values of the outputs behind each entry.")] = False,
-) -> None:
+def table(file: File, outputs: Outputs = False) -> None:
     """Print the transition table of a small circuit.
 
     Input vectors (of at most 4 inputs) run across in Gray order, internal states (of at most

@@ -26,7 +26,8 @@ def locate(name: str) -> tuple[str, str | None]:
     known = gallery()
     if name not in known:
         message = f"there is neither a file nor a gallery file `{name}`"
-        raise InputError(Problem("file-not-found", message, Span(name, 1, 1), help=nearest(name, [*known, *os.listdir()])))
+        help = nearest(name, [*os.listdir(), *known])
+        raise InputError(Problem("file-not-found", message, Span(name, 1, 1), help=help))
     return known[name], None
 
 

@@ -35,15 +35,15 @@ class Progress:
             return
         self._next = time.monotonic() + 0.1
         line = visible(f"{self.subject}: {said}" if said != self.subject else said)
-        line = line[: Page.of(self.stream).width - 1]
+        line = line[: Page.of(self.stream).width - 3]
         self.stream.write(f"\r{line}{' ' * (self._width - columns(line))}")
         self.stream.flush()
         self._width = columns(line)
 
     def clear(self) -> None:
-        """Take the line away."""
+        """Take the line away, and with it the `^C` that a terminal puts behind it."""
         if self._width:
-            self.stream.write(f"\r{' ' * self._width}\r")
+            self.stream.write(f"\r{' ' * (self._width + 2)}\r")
             self.stream.flush()
         self._width, self._next = 0, 0.0
 

@@ -39,7 +39,7 @@ class Page:
         """Lines of `text`: the first begins with `first`, the others with `rest` (blanks of the same width)."""
         rest = " " * columns(first) if rest is None else rest
         lines, line, empty = [], first, True
-        for word in visible(text).split():
+        for word in map(visible, text.split()):
             if not empty and columns(line) + 1 + columns(word) > self.width:
                 lines.append(line)
                 line, empty = rest, True
@@ -49,8 +49,8 @@ class Page:
 
 
 def visible(text: str) -> str:
-    """`text` with every character escaped that a terminal would not show as it is."""
-    return "".join(c if c.isprintable() else " " if c in "\t\n" else f"\\u{{{ord(c):x}}}" for c in text)
+    """`text` with tabs as blanks and every character escaped that a terminal would not show as it is."""
+    return "".join(c if c.isprintable() else "    " if c == "\t" else f"\\u{{{ord(c):x}}}" for c in text)
 
 
 def columns(text: str) -> int:

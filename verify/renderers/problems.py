@@ -2,17 +2,16 @@
 
 from __future__ import annotations
 
-import unicodedata
 from collections.abc import Callable, Iterable
 from functools import lru_cache
 from typing import Any
 
 from settled.models.problems import Problem
+from settled.verify.renderers.page import columns, visible
 
 WIDTH = 110
 """Columns of the user's line that are shown; of a longer one, the part around the spot."""
 
-_TAB = "    "
 _STYLES = {"error": "1;31", "message": "1", "frame": "34", "mark": "1;31", "help": "32"}
 
 Paint = Callable[[str, str], str]
@@ -49,16 +48,16 @@ def as_json(problems: Iterable[Problem]) -> list[dict[str, Any]]:
 def _paragraph(problem: Problem, lines: Callable[[str], list[str]], paint: Paint) -> list[str]:
     """The lines of one problem."""
     span = problem.span
-    shown = [f"{paint('error', f'error[{problem.code}]')}: {paint('message', _visible(problem.message))}"]
+    shown = [f"{paint('error', f'error[{problem.code}]')}: {paint('message', visible(problem.message))}"]
     margin = " " * len(str(span.line)) if span else " "
     if span is not None:
-        shown.append(f"{margin}{paint('frame', '-->')} {_visible(span.file)}:{span.line}:{span.column}")
+        shown.append(f"{margin}{paint('frame', '-->')} {visible(span.file)}:{span.line}:{span.column}")
         source = lines(span.file)
         if span.line <= len(source) and any(source):
             shown += _excerpt(problem, source[span.line - 1], margin, paint)
     sign = paint("frame", "=")
-    shown += [f"{margin} {sign} note: {_visible(note)}" for note in problem.notes]
-    shown += [f"{margin} {sign} {paint('help', 'help')}: {_visible(problem.help)}"] if problem.help else []
+    shown += [f"{margin} {sign} note: {visible(note)}" for note in problem.notes]
+    shown += [f"{margin} {sign} {paint('help', 'help')}: {visible(problem.help)}"] if problem.help else []
     return shown
 
 
@@ -66,7 +65,7 @@ def _excerpt(problem: Problem, line: str, margin: str, paint: Paint) -> list[str
     assert problem.span is not None
     start = problem.span.column - 1
     text, before, marked = _window(line.rstrip("\r"), start, start + problem.span.length)
-    carets = paint("mark", "^" * marked + (f" {_visible(problem.spot)}" if problem.spot else ""))
+    carets = paint("mark", "^" * marked + (f" {visible(problem.spot)}" if problem.spot else ""))
     bar = paint("frame", "|")
     number = paint("frame", str(problem.span.line))
     return [f"{margin} {bar}", f"{number} {bar} {text}".rstrip(), f"{margin} {bar} {' ' * before}{carets}"]
@@ -78,19 +77,5 @@ def _window(line: str, start: int, end: int) -> tuple[str, int, int]:
     last = min(len(line), first + WIDTH)
     head, marked, tail = line[first:start], line[start : min(end, last)], line[min(max(start, end), last) : last]
     lead = "..." if first else ""
-    shown = lead + _visible(head + marked + tail) + ("..." if last < len(line) else "")
-    return shown, len(lead) + _columns(_visible(head)), max(1, _columns(_visible(marked)))
-
-
-def _visible(text: str) -> str:
-    """`text` with tabs as blanks and every character escaped that a terminal would not show as it is."""
-    return "".join(c if c.isprintable() else _TAB if c == "\t" else _escaped(c) for c in text)
-
-
-def _escaped(character: str) -> str:
-    return f"\\u{{{ord(character):x}}}"
-
-
-def _columns(text: str) -> int:
-    """How many columns of a terminal `text` takes."""
-    return sum(0 if unicodedata.combining(c) else 2 if unicodedata.east_asian_width(c) in "WF" else 1 for c in text)
+    shown = lead + visible(head + marked + tail) + ("..." if last < len(line) else "")
+    return shown, len(lead) + columns(visible(head)), max(1, columns(visible(marked)))
