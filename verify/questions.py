@@ -87,6 +87,16 @@ class Evades(Question):
 
 
 @dataclass(frozen=True)
+class PowersUp(Question):
+    """Can runs from any internal state, through `vectors`, end in different total states, or go on for ever?
+
+    Each packed input vector is applied in one instant once the circuit has settled under the one before.
+    """
+
+    vectors: tuple[int, ...]
+
+
+@dataclass(frozen=True)
 class Answer:
     """What an engine found.
 

@@ -19,7 +19,10 @@ def replay(kind: Kind, behaviour: Behaviour, question: Question, answer: Answer)
         raise ReplayFailed(f"{kind.name}: refuted without a run")
     try:
         for run in answer.runs:
-            walk(behaviour, run, kind.anywhere)
+            if kind.walk is None:
+                walk(behaviour, run, kind.anywhere)
+            else:
+                kind.walk(behaviour, question, run)
         return kind.offends(behaviour, question, answer)
     except ValueError as error:
         raise ReplayFailed(f"{kind.name}: {error}") from error

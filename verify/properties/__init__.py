@@ -14,7 +14,7 @@ from typing import Any
 
 from settled.models.circuit import Circuit
 from settled.models.specification import Shape
-from settled.models.states import Behaviour
+from settled.models.states import Behaviour, Run
 from settled.verify.questions import Answer, Question
 
 Options = Mapping[str, Any]
@@ -32,6 +32,8 @@ class Kind:
       do not show a failure.
     * `standard`: whether it is asked when a file asks nothing itself, and at which place.
     * `anywhere`: its runs may begin outside the start states.
+    * `walk(behaviour, question, run)`: how a run is walked when it is not one of the circuit in its environment; raises
+      `ValueError`.
     * `compares_winners`: a refutation says whether simultaneous switching is needed for it.
     * `vacuous`: why there was nothing to range over, when that is so.
     """
@@ -43,6 +45,7 @@ class Kind:
     offends: Callable[[Behaviour, Any, Answer], tuple[str, dict[str, Any]]]
     standard: int | None = None
     anywhere: bool = False
+    walk: Callable[[Behaviour, Any, Run], object] | None = None
     compares_winners: bool = False
     vacuous: str = "no reachable stable total state has an allowed input change"
 
