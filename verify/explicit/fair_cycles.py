@@ -13,8 +13,8 @@ from itertools import count
 
 import numpy as np
 
-from settled.encodings.packed import Words
-from settled.verify.explicit.graph import Edges, Graph, Key, Places
+from settled.encodings.packed import Places, Words
+from settled.verify.explicit.graph import Edges, Graph, Key
 
 LARGE = 200
 PATIENCE = 20_000
@@ -22,6 +22,11 @@ PATIENCE = 20_000
 Place = tuple[int, tuple[int, int]]
 HEEDED = (0, 0)
 HOME: Place = (-1, HEEDED)
+FAR: Key = (1 << 40, 0)
+
+
+class TooLarge(Exception):
+    """The search for a shortest cycle is given up."""
 
 
 def nearest_cycle(
@@ -32,17 +37,17 @@ def nearest_cycle(
     `key` is the length (input changes, steps) of the way to a vertex. Shortest as long as a core has at most 200
     states; beyond that it is entered at its nearest state. Very long cycles may not be the shortest.
     """
-    best: tuple[Key, list[int]] | None = None
+    best: list[int] | None = None
+    length: Key = FAR
     core_at = cache(lambda number: Core(graph, edges, pressing, cores[number]))
     for entry, number in sorted(_entries(cores, key), key=lambda found: (key(found[0]), found[0])):
         changes, steps = key(entry)
-        if best is not None and (changes, steps + 2) > best[0]:
+        if (changes, steps + 2) > length:
             break
-        more, cycle = core_at(number).cycle(entry)
-        length = (changes + more, steps + len(cycle))
-        if best is None or length < best[0]:
-            best = (length, cycle)
-    return best[1] if best else None
+        cycle = core_at(number).cycle(entry, (length[0] - changes, length[1] - steps))
+        if cycle is not None:
+            best, length = cycle, (changes + core_at(number).changes(cycle), steps + len(cycle))
+    return best
 
 
 def _entries(cores: list[Places], key: Callable[[int], Key]) -> Iterator[tuple[int, int]]:
@@ -56,57 +61,71 @@ class Core:
     """A strongly connected set of vertices in which nothing presses with one value throughout."""
 
     def __init__(self, graph: Graph, edges: Edges, pressing: Words, members: Places) -> None:
-        self.graph, self.edges, self.pressing = graph, edges, pressing
-        self.members = set(members.tolist())
+        self.edges, self.inputs = edges, int(graph.packed.input_mask)
+        self.vertex = dict(zip(members.tolist(), graph.vertices[members].tolist(), strict=True))
+        self.pressing = dict(zip(members.tolist(), pressing[members].tolist(), strict=True))
         self.after = cache(self._after)
 
-    def cycle(self, entry: int) -> tuple[int, list[int]]:
-        """A fair closed walk from `entry`, without the return to it, and how many of its steps change an input.
+    def cycle(self, entry: int, limit: Key) -> list[int] | None:
+        """A fair closed walk from `entry`, without the return to it; None if none is shorter than `limit`.
 
         The shortest one, unless the search for it gets too large; then one that heeds what presses one by one.
         """
-        path = self._shortest(entry) or self._tour(entry)
-        following = [*path[1:], entry]
-        return sum(self._changes(v, w) for v, w in zip(path, following, strict=True)), path
+        try:
+            return self._shortest(entry, limit)
+        except TooLarge:
+            tour = self._tour(entry)
+            return tour if (self.changes(tour), len(tour)) < limit else None
+
+    def changes(self, cycle: list[int]) -> int:
+        """How many steps of a closed walk change an input."""
+        return sum(self._changes(v, w) for v, w in zip(cycle, [*cycle[1:], cycle[0]], strict=True))
 
     def _after(self, vertex: int) -> list[int]:
         _, after = self.edges.out_of(np.array([vertex]))
-        return sorted(self.members.intersection(after.tolist()))
+        return sorted(v for v in after.tolist() if v in self.vertex)
 
     def _changes(self, before: int, after: int) -> int:
-        flips = int(self.graph.vertices[before]) ^ int(self.graph.vertices[after])
-        return int(flips & int(self.graph.packed.input_mask) != 0)
+        return int((self.vertex[before] ^ self.vertex[after]) & self.inputs != 0)
 
     def _unheeded(self, vertex: int, left: tuple[int, int] = (-1, -1)) -> tuple[int, int]:
         """What of `left` (pressing while 1, pressing while 0) presses in this vertex as well."""
-        value, pressing = int(self.graph.vertices[vertex]), int(self.pressing[vertex])
+        value, pressing = self.vertex[vertex], self.pressing[vertex]
         return left[0] & pressing & value, left[1] & pressing & ~value
 
-    def _shortest(self, entry: int) -> list[int] | None:
-        """Dijkstra's search over (vertex, what has pressed all along); None when it gets too large."""
+    def _shortest(self, entry: int, limit: Key) -> list[int] | None:
+        """Dijkstra's search over (vertex, what has pressed all along). Raises `TooLarge`."""
         start = (entry, self._unheeded(entry))
         parent: dict[Place, Place] = {}
         number = count()
         queue = [(0, 0, next(number), start, start)]
-        while queue and len(parent) < PATIENCE:
+        while queue:
             changes, steps, _, here, before = heappop(queue)
+            if (changes, steps) >= limit:
+                return None
             if here in parent:
                 continue
             if here == HOME:
                 return _trace(parent, start, before)
+            if len(parent) >= PATIENCE:
+                raise TooLarge
             parent[here] = before
             vertex, left = here
             for v in self.after(vertex):
                 there = HOME if v == entry and left == HEEDED else (v, self._unheeded(v, left))
                 if there not in parent:
                     heappush(queue, (changes + self._changes(vertex, v), steps + 1, next(number), there, here))
-        return None
+        raise AssertionError("a set in which nothing presses throughout has a fair cycle through each vertex")
 
     def _tour(self, entry: int) -> list[int]:
         """From `entry` to the nearest vertex in which something left presses no longer, and so on; then back."""
         path, left = [entry], self._unheeded(entry)
+
+        def relieved(v: int) -> bool:
+            return self._unheeded(v, left) != left
+
         while left != HEEDED:
-            for v in self._nearest(path[-1], lambda v, left=left: self._unheeded(v, left) != left):
+            for v in self._nearest(path[-1], relieved):
                 path.append(v)
                 left = self._unheeded(v, left)
         if path[-1] == entry and len(path) > 1:

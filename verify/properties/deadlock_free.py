@@ -24,7 +24,8 @@ def _offends(behaviour: Behaviour, _: Deadlocks, answer: Answer) -> tuple[str, d
     last = answer.runs[0].states[-1]
     if next(behaviour.moves(Situation(last)), None) is not None:
         raise ValueError("something may still move in the last state of the run")
-    return f"A dead end is reachable: in {describe(behaviour.circuit, last)} nothing is excited and no input may change.", {}
+    dead = describe(behaviour.circuit, last)
+    return f"A dead end is reachable: in {dead} no node is excited and no input may change.", {}
 
 
 KIND = Kind("deadlock-free", Shape(), _question, _claim, _offends)
