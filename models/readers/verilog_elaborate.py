@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import re
 from bisect import bisect_right
-from collections.abc import Collection, Mapping, Sequence
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -50,6 +50,7 @@ _CODES = {
     "ParseTreeTooDeep": ("too-deep", "name inner parts as nets of their own"),
 }
 """Diagnostics that have a code of their own here; those among them that are mere warnings count as errors."""
+_MESSAGES = {"unconnected-pin": "a pin of a gate is connected to nothing, or by name"}
 
 
 @dataclass(frozen=True)
@@ -110,17 +111,17 @@ class Design:
 
     def problems(self) -> list[Problem]:
         """What the elaborator says against the design."""
-        return _problems(self.text, self.compilation.getAllDiagnostics())
+        return _problems(self.text, list(self.compilation.getAllDiagnostics()))
 
 
-def elaborate(text: str, file: str, top: str | None, stubs: Mapping[str, str]) -> Design:
+def elaborate(text: str, file: str, top: str | None, stubs: Mapping[str, str], legacy: bool) -> Design:
     """Parse `text` and elaborate the module `top`, by default the only one that no other one instantiates.
 
     `stubs` gives the empty Verilog module of each library cell, by name; a module of the user's goes before it.
-    Raises `InputError`.
+    `legacy`: the keywords are those of IEEE 1364-2005. Raises `InputError`.
     """
     words = scan(text, file)
-    prefix = _PREFIX if file.endswith(".v") else ""
+    prefix = _PREFIX if legacy else ""
     if len(text) > _FIRST_PIECE:
         _parse(text[: text.rfind("\n", 0, _FIRST_PIECE) + 1], file, prefix, _MOST_PROBLEMS)
     source, bag, tree = _parse(text, file, prefix)
@@ -136,9 +137,7 @@ def elaborate(text: str, file: str, top: str | None, stubs: Mapping[str, str]) -
     return Design(source, compilation, instance, frozenset(used), tuple(modules))
 
 
-def _parse(
-    text: str, file: str, prefix: str, tolerated: int = 0
-) -> tuple[Text, pyslang.Bag, syntax.SyntaxTree]:
+def _parse(text: str, file: str, prefix: str, tolerated: int = 0) -> tuple[Text, pyslang.Bag, syntax.SyntaxTree]:
     """The syntax tree of `text`; more than `tolerated` errors raise `InputError` with the first of them."""
     manager = pyslang.SourceManager()
     bag = pyslang.Bag()
@@ -186,27 +185,28 @@ def _check_top(source: Text, modules: Collection[str], top: str | None) -> None:
 
 
 def _choose(source: Text, compilation: ast.Compilation, modules: Mapping[str, Span]) -> ast.InstanceSymbol:
-    tops = [i for i in compilation.getRoot().topInstances if i.name in modules]
+    tops: list[ast.InstanceSymbol] = [i for i in compilation.getRoot().topInstances if i.name in modules]
     if len(tops) == 1:
         return tops[0]
     if not tops:
         message = "every module is instantiated by another one, so none is the top"
         raise InputError(Problem("recursion", message, next(iter(modules.values())), "one of them"))
-    names = [name for name in modules if any(i.name == name for i in tops)]
-    listed = ", ".join(f"`{name}`" for name in names)
+    chosen = {instance.name for instance in tops}
+    names = [name for name in modules if name in chosen]
+    listed = ", ".join(f"`{name}`" for name in names[:10]) + (", ..." if len(names) > 10 else "")
     message = f"{len(names)} modules are instantiated by no other one: {listed}"
-    notes = [f"`{n}` is defined at {modules[n].file}:{modules[n].line}:{modules[n].column}" for n in names[1:]]
+    notes = [f"`{n}` is defined at {modules[n].file}:{modules[n].line}:{modules[n].column}" for n in names[1:10]]
     help = "say which one is meant with `top`"
     raise InputError(Problem("several-tops", message, modules[names[0]], "one of them", tuple(notes), help))
 
 
-def _problems(source: Text, found: Sequence[pyslang.Diagnostic], otherwise: str = "elaboration") -> list[Problem]:
+def _problems(source: Text, found: Iterable[pyslang.Diagnostic], otherwise: str = "elaboration") -> list[Problem]:
     engine = pyslang.DiagnosticEngine(source.manager)
     problems = []
     for d in found:
         known = _CODES.get(str(d.code).removeprefix("DiagCode(").removesuffix(")"))
         if known or d.isError():
             code, help = known or (otherwise, "")
-            message = re.sub(r"'([^']+)'", r"`\1`", engine.formatMessage(d))
+            message = _MESSAGES.get(code, re.sub(r"'([^']+)'", r"`\1`", engine.formatMessage(d)))
             problems.append(Problem(code, message, source.span(d.location), help=help))
     return problems
