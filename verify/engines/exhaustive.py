@@ -18,7 +18,7 @@ from settled.verify.explicit.changes_thrice import ThreeChanges
 from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.hazards import Watch, flickering, shortest_flicker
 from settled.verify.explicit.oscillations import shortest_lasso
-from settled.verify.explicit.progress import dead_ends, shortest_evasion
+from settled.verify.explicit.progress import changeable, dead_ends, shortest_evasion
 from settled.verify.explicit.races import nearest_ends, run_to, shortest_race
 from settled.verify.explicit.withdrawals import shortest_withdrawal
 from settled.verify.limits import LimitReached
@@ -93,6 +93,8 @@ def _stable(graph: Graph) -> int:
 
 
 def _changes(graph: Graph) -> int:
+    if not graph.packed.fundamental:
+        return int(np.bitwise_count(changeable(graph.packed, graph.vertices)).sum())
     edges = graph.change_edges
     if not graph.packed.burst:
         return len(edges.source)
@@ -200,7 +202,9 @@ def deadlocks(task: Task, _: Deadlocks) -> Answer:
     """Look for a dead end."""
     graph = explored(task)
     found = graph.earliest(dead_ends(graph))
-    return refuted(graph, [run(graph, "the run to it", graph.path_to(int(found[0])))]) if len(found) else proved(graph, True)
+    if not len(found):
+        return proved(graph, True)
+    return refuted(graph, [run(graph, "the run to it", graph.path_to(int(found[0])))])
 
 
 def evades(task: Task, question: Evades) -> Answer:

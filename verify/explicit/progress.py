@@ -25,14 +25,20 @@ def dead_ends(graph: Graph) -> Places:
     return np.delete(stable, source)
 
 
+def changeable(packed: Packed, vertices: Words) -> Words:
+    """The inputs that may change alone in each vertex, as bits: guards and assumptions allow it."""
+    found = packed.allowed(vertices)
+    for i in range(packed.inputs):
+        bit = np.uint64(1 << i)
+        found = np.where(packed.admits(vertices ^ bit), found, found & ~bit)
+    return found
+
+
 def pressing(packed: Packed, vertices: Words, excited: Words) -> Words:
     """What must not wait for ever, as bits of each vertex: nodes, `must` inputs, and members of a burst."""
-    found = excited | (vertices & ~packed.state_mask)
-    allowed = packed.allowed(vertices)
-    for i, name in enumerate(packed.circuit.inputs):
-        if packed.environment.guard(name).must:
-            bit = np.uint64(1 << i)
-            found = found | np.where(packed.admits(vertices ^ bit), allowed & bit, np.uint64(0))
+    must = [packed.environment.guard(x).must for x in packed.circuit.inputs]
+    inputs = np.uint64(sum(1 << i for i, presses in enumerate(must) if presses))
+    found: Words = excited | (changeable(packed, vertices) & inputs) | (vertices & ~packed.state_mask)
     return found
 
 
