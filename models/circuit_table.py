@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import pkgutil
-from collections.abc import Callable
+from collections.abc import Callable, Collection
+from dataclasses import replace
 from importlib import import_module
 from pathlib import Path
 from typing import Literal, TypeVar
@@ -16,7 +17,7 @@ from settled.models.readers import equations
 from settled.models.readers.equations import find_cycle
 from settled.models.source import Span
 from settled.models.specification import CircuitSource
-from settled.models.text_file import check_file, read_text
+from settled.models.text_file import problem_of, read_text
 from settled.models.toml_document import Spot, listed
 from settled.models.toml_loading import SIZE_LIMIT, load
 from settled.models.toml_readers import one_of, strings, table, text
@@ -25,7 +26,6 @@ T = TypeVar("T")
 
 _FILE_KEYS = ("file", "top", "library", "closed")
 _MODEL_KEYS = ("delay", "feedback", "winners", "isochronic")
-_WIRE_KEYS = ("isochronic", "closed", "cells")
 KEYS = (*_FILE_KEYS, *_MODEL_KEYS, *equations.KEYS)
 
 
@@ -36,11 +36,14 @@ def read_file(path: str | Path, *, named_at: Span | None = None, chain: tuple[Pa
     """
     if Path(path).suffix != ".toml":
         span = named_at or Span(str(path), 1, 1)
+        if unusable := problem_of(Path(path), span):
+            raise InputError(unusable)
         return CircuitSource(_read_netlist(Path(path), None, (), span), span=named_at)
+    text = read_text(path, limit=SIZE_LIMIT, named_at=named_at)
     if Path(path).resolve() in chain:
         message = f"`{path}` takes its circuit from itself"
         raise InputError(Problem("circular-file", message, named_at, "leads back to a file that is being read"))
-    document = load(str(path), read_text(path, limit=SIZE_LIMIT, named_at=named_at))
+    document = load(str(path), text)
     source = read_table(document.root, chain)
     document.finish()
     assert source is not None, "a circuit that cannot be read leaves a problem"
@@ -64,50 +67,46 @@ def circuit(spot: Spot, chain: tuple[Path, ...] = ()) -> CircuitSource | None:
         return _from_file(spot, chain)
     if not spot.has("excitation"):
         spot.missing("excitation", "a circuit", help='give equations in `[circuit.excitation]`, or `file = "..."`')
-        return None
     _refuse(spot, _FILE_KEYS, "belongs to a netlist file; this circuit is given by equations")
-    _refuse(spot, ("feedback",), "does not apply to equations: each line of `excitation` is a node")
     netlist = equations.netlist(spot, Path(spot.document.file).stem if spot.document.file != "-" else "circuit")
-    return None if netlist is None else _under_delays(spot, netlist, "feedback")
+    return _under_delays(spot, netlist, "feedback")
 
 
-def _refuse(spot: Spot, keys: tuple[str, ...], why: str, code: str = "conflict") -> None:
+def _refuse(spot: Spot, keys: Collection[str], why: str) -> None:
     for key in keys:
         if spot.has(key):
             member = spot.child(key)
-            member.problem(code, f"`{key}` {why}", "not for this circuit", span=member.key_span)
+            member.problem("conflict", f"`{key}` {why}", "not for this circuit", at_key=True)
 
 
 def _from_file(spot: Spot, chain: tuple[Path, ...]) -> CircuitSource | None:
     _refuse(spot, equations.KEYS, "belongs to equations; this circuit is read from a file")
-    name = spot.take("file", text)
     folder = Path(spot.document.file).parent
-    library = [(member.value, member.span) for member in spot.take("library", strings) or ()]
-    top = spot.take("top", text)
+    name, top = spot.take("file", text), spot.take("top", text)
+    library = spot.take("library", strings) or []
     if name is None:
         return None
-    span = spot.child("file").span
+    file = spot.child("file")
     if name.endswith(".toml"):
-        others = tuple(key for key in (*_FILE_KEYS, *_MODEL_KEYS) if key != "file")
+        others = [key for key in (*_FILE_KEYS, *_MODEL_KEYS) if key != "file"]
         _refuse(spot, others, f"stands in `{name}`, which says all about its circuit")
-        return _guarded(spot, lambda: read_file(folder / name, named_at=span, chain=chain))
-    netlist = _guarded(spot, lambda: _read_netlist(folder / name, top, _libraries(folder, library), span))
-    return None if netlist is None else _under_delays(spot, netlist, "gate")
+        return _guarded(file, lambda: read_file(folder / name, named_at=file.span, chain=chain))
+    cells = tuple(folder / member.value for member in library)
+    named = [(folder / name, file.span), *((cell, member.span) for cell, member in zip(cells, library, strict=True))]
+    unusable = [bad for path, place in named if (bad := problem_of(path, place))]
+    spot.document.note(*unusable)
+    netlist = None if unusable else _guarded(file, lambda: _read_netlist(folder / name, top, cells, file.span))
+    return _under_delays(spot, netlist, "gate")
 
 
-def _guarded(spot: Spot, read: Callable[[], T]) -> T | None:
-    """What `read` returns; the problems of another file are noted in this document."""
+def _guarded(file: Spot, read: Callable[[], T]) -> T | None:
+    """What `read` returns; the problems of the other file are noted in this document, with a place in one of them."""
     try:
         return read()
     except InputError as error:
-        spot.document.problems.extend(error.problems)
-        return None
-
-
-def _libraries(folder: Path, names: list[tuple[str, Span]]) -> tuple[Path, ...]:
-    for name, span in names:
-        check_file(folder / name, span)
-    return tuple(folder / name for name, _ in names)
+        problems = [problem if problem.span else replace(problem, span=file.span) for problem in error.problems]
+    file.document.note(*problems)
+    return None
 
 
 def _read_netlist(path: Path, top: str | None, library: tuple[Path, ...], span: Span) -> Netlist:
@@ -117,11 +116,9 @@ def _read_netlist(path: Path, top: str | None, library: tuple[Path, ...], span: 
         reader = import_module(f"{readers.__name__}.{name}")
         suffixes: tuple[str, ...] = getattr(reader, "SUFFIXES", ())
         if path.suffix.lower() in suffixes:
-            check_file(path, span)
-            netlist: Netlist = reader.read(path, top=top, library=library)
+            netlist: Netlist = reader.read(str(path), top=top, library=[str(cells) for cells in library])
             return netlist
         known.extend(suffixes)
-    check_file(path, span)
     message = f"`{path.name}` is no file that a circuit can be read from"
     help = f"circuits are read from files whose names end in {listed([*known, '.toml'])}"
     raise InputError(Problem("unknown-suffix", message, span, "named here", help=help))
@@ -130,24 +127,37 @@ def _read_netlist(path: Path, top: str | None, library: tuple[Path, ...], span: 
 # ---- the delay model ---------------------------------------------------------------------------------------------
 
 
-def _under_delays(spot: Spot, netlist: Netlist, default: str) -> CircuitSource:
-    scope = Scope.of(netlist)
-    delay = (spot.take("delay", one_of("feedback", "gate", "wire")) if spot.has("delay") else default) or "wire"
-    if delay != "wire":
-        _refuse(spot, _WIRE_KEYS, f'needs `delay = "wire"`; the delay model is `{delay}`')
-    if delay != "feedback" and not netlist.equations:
+def _under_delays(spot: Spot, netlist: Netlist | None, default: str) -> CircuitSource | None:
+    """The netlist with the delay model of the table; without one the table is checked all the same."""
+    scope = Scope.of(netlist) if netlist else None
+    delay = (spot.take("delay", one_of("feedback", "gate", "wire")) if spot.has("delay") else default) or ""
+    _check_delay_keys(spot, delay)
+    winners = spot.take("winners", one_of("any", "one")) or "any"
+    isochronic = spot.take("isochronic", names_among(_connected(scope) if scope else None, "net")) or ()
+    closed = spot.take("closed", names_among(netlist.groups if netlist else None, "module or instance")) or ()
+    if netlist is None or scope is None:
+        return None
+    feedback = None if delay != "feedback" or netlist.equations else _feedback(spot, scope, netlist)
+    return CircuitSource(netlist, delay, feedback, winners, _nets(isochronic, scope), closed, spot.span)
+
+
+def _check_delay_keys(spot: Spot, delay: str) -> None:
+    """Keys of one delay model are not given under another; under an unknown one anything goes."""
+    if delay in ("feedback", "gate"):
+        _refuse(
+            spot,
+            ("isochronic", "closed" if spot.has("file") else "cells"),
+            f'needs `delay = "wire"`; the delay model is `{delay}`',
+        )
+    if not spot.has("file"):
+        _refuse(spot, ("feedback",), "does not apply to equations: each line of `excitation` is a node")
+    elif delay in ("gate", "wire"):
         _refuse(spot, ("feedback",), f'needs `delay = "feedback"`; the delay model is `{delay}`')
-    nets = [*scope.inputs, *scope.gates, *(name for name in scope.defined if scope.net(name) not in scope.defined)]
-    closed = {} if netlist.equations else netlist.groups
-    return CircuitSource(
-        netlist=netlist,
-        delay=delay,
-        feedback=None if delay != "feedback" or netlist.equations else _feedback(spot, scope, netlist),
-        winners=spot.take("winners", one_of("any", "one")) or "any",
-        isochronic=_nets(spot.take("isochronic", names_among(nets, "net")) or (), scope),
-        closed=spot.take("closed", names_among(closed, "module or instance")) or (),
-        span=spot.span,
-    )
+
+
+def _connected(scope: Scope) -> list[str]:
+    """Names of inputs and gates, also in their other names."""
+    return [name for name, kind in scope.signals.items() if kind != "defined signal" or scope.net(name) != name]
 
 
 def _nets(names: tuple[str, ...], scope: Scope) -> tuple[str, ...]:
@@ -162,7 +172,7 @@ def _feedback(spot: Spot, scope: Scope, netlist: Netlist) -> tuple[str, ...] | L
     if isinstance(lines.value, str):
         lines.wrong_type('an array of gates or "auto"')
         return "auto"
-    gates = [name for name in scope.signals if scope.net(name) in scope.gates]
+    gates = [name for name in scope.signals if scope.net(name) in scope.gate_set]
     before = len(spot.document.problems)
     named = _nets(names_among(gates, "gate")(lines) or (), scope)
     if len(spot.document.problems) == before:

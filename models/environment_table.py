@@ -21,7 +21,7 @@ def read_environment(spot: Spot, scope: Scope | None) -> Environment | None:
     if mode == "input-output" and spot.has("changes"):
         changes = spot.child("changes")
         message = "`changes` has no meaning in input-output mode, where an input changes whenever its guard allows"
-        changes.problem("conflict", message, "for fundamental mode only", span=changes.key_span)
+        changes.problem("conflict", message, "for fundamental mode only", at_key=True)
     return Environment(
         mode=mode or "fundamental",
         changes=spot.take("changes", one_of("single", "burst", "simultaneous")) or "single",
@@ -46,7 +46,7 @@ def _guard(line: Spot, scope: Scope | None, mode: str) -> Guard:
     if mode == "fundamental" and line.has("must"):
         must = line.child("must")
         message = "`must` belongs to input-output mode; in fundamental mode the environment may always rest"
-        must.problem("conflict", message, "for input-output mode only", span=must.key_span)
+        must.problem("conflict", message, "for input-output mode only", at_key=True)
     guard = expression(scope)
     return Guard(
         rises=line.take("rises", guard) or TRUE,

@@ -4,18 +4,23 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Collection, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 from settled.models.expression_text import NameAt, parse
 from settled.models.logic import Expr, excited, substitute
 from settled.models.netlist import Netlist
-from settled.models.problems import InputError, nearest
+from settled.models.problems import InputError, Problem, nearest
+from settled.models.source import Span
 from settled.models.toml_document import Spot, listed
 from settled.models.toml_readers import bit, strings, table
 
+NEAREST_LIMIT = 2_000
+"""Among more names than this no near one is looked for."""
+
 _UNREADABLE = re.compile(r"[\s\x00-\x1f\x7f]|\A\\")
 _SWALLOWED = re.compile(r"\\[btnfr]\Z")
+_CONTROL = "`{}` in double quotes is a control character; write the expression in single quotes"
 
 
 @dataclass(frozen=True)
@@ -39,6 +44,10 @@ class Scope:
             **dict.fromkeys(self.inputs, "input"),
         }
 
+    @cached_property
+    def gate_set(self) -> frozenset[str]:
+        return frozenset(self.gates)
+
     def net(self, name: str) -> str:
         """The input or gate that `name` is another name of, or `name`."""
         seen = set()
@@ -59,15 +68,14 @@ def new_names(spot: Spot) -> tuple[str, ...] | None:
 
 def check_new(name: str, spot: Spot, at_key: bool = False) -> None:
     """Note a problem when expressions could not read `name`, at the value or the key of `spot`."""
-    span = spot.key_span if at_key else spot.span
     if name in ("stable", "excited"):
         spot.problem(
-            "reserved-name", f"`{name}` is a word of expressions and cannot name a signal", "reserved", span=span
+            "reserved-name", f"`{name}` is a word of expressions and cannot name a signal", "reserved", at_key=at_key
         )
     elif not name or _UNREADABLE.search(name):
         help = "the backslash and the final blank of an escaped name stand in expressions only" if "\\" in name else ""
         message = f"`{name}` cannot name a signal: white space or a leading backslash"
-        spot.problem("bad-name", message if name else "a name is empty", "not a name", span=span, help=help)
+        spot.problem("bad-name", message if name else "a name is empty", "not a name", at_key=at_key, help=help)
 
 
 def names_among(known: Collection[str] | None, what: str) -> Callable[[Spot], tuple[str, ...] | None]:
@@ -87,13 +95,13 @@ def names_among(known: Collection[str] | None, what: str) -> Callable[[Spot], tu
 
 def unknown(spot: Spot, name: str, known: Collection[str], what: str, at_key: bool = False) -> None:
     """Note that there is no `what` called `name`."""
-    span = spot.key_span if at_key else spot.span
-    spot.problem("unknown-name", f"unknown {what} `{name}`", "not known", span=span, help=suggestion(name, known))
+    spot.problem("unknown-name", f"unknown {what} `{name}`", "not known", at_key=at_key, help=suggestion(name, known))
 
 
 def suggestion(name: str, known: Collection[str]) -> str:
     """The nearest known name; all of them when none is near and they are few."""
-    return nearest(name, known) or (f"the known names are {listed(known)}" if 0 < len(known) <= 8 else "")
+    near = nearest(name, known) if len(known) <= NEAREST_LIMIT else ""
+    return near or (f"the known names are {listed(known)}" if 0 < len(known) <= 8 else "")
 
 
 def expression(
@@ -108,7 +116,7 @@ def expression(
         try:
             parsed = parse(spot.value, span_of=spot.inside, state_words=state_words)
         except InputError as error:
-            spot.document.problems.extend(error.problems)
+            spot.document.note(*(_explained(spot, problem) for problem in error.problems))
             return None
         if scope is None:
             return parsed.expr
@@ -126,6 +134,8 @@ def expression(
 def _check_name(spot: Spot, at: NameAt, scope: Scope, inputs_only: bool) -> bool:
     """Whether the name may stand where it does; notes a problem if not."""
     kind = scope.signals.get(at.name)
+    if kind and (kind == "input" or not inputs_only) and (not at.node or scope.net(at.name) in scope.gate_set):
+        return True
     span = spot.inside(at.start, at.end)
     if kind is None:
         known = scope.inputs if inputs_only else scope.signals
@@ -134,23 +144,27 @@ def _check_name(spot: Spot, at: NameAt, scope: Scope, inputs_only: bool) -> bool
         spot.problem(
             "not-an-input", f"`{at.name}` is no input: `{spot.name}` reads inputs only", f"a {kind}", span=span
         )
-    elif at.node and scope.net(at.name) not in scope.gates:
+    else:
         message = f"`{at.name}` carries no delay: `excited` takes a node"
         spot.problem("not-a-node", message, "an input" if kind == "input" else f"a {kind}", span=span)
-    else:
-        return True
     return False
 
 
 def _hint(spot: Spot, at: NameAt, known: Collection[str]) -> str:
     """The nearest name, unless TOML has turned the backslash of an escaped name into a control character."""
-    document = spot.document
-    span = spot.inside(at.start, at.end)
-    start = document.line_starts[span.line - 1] + span.column - 1
-    if not at.start or not _SWALLOWED.search(document.text[start - 2 : start]):
-        return suggestion(at.name, known)
-    code = document.text[start - 2 : start]
-    return f"`{code}` in double quotes is a control character; write the expression in single quotes"
+    before = _written(spot, spot.inside(at.start - 1, at.start)) if at.start else ""
+    return _CONTROL.format(before) if _SWALLOWED.match(before) else suggestion(at.name, known)
+
+
+def _explained(spot: Spot, problem: Problem) -> Problem:
+    """`problem` of an expression, with a cure where TOML has made a control character of a backslash."""
+    written = _written(spot, problem.span) if problem.span else ""
+    return replace(problem, help=_CONTROL.format(written)) if _SWALLOWED.match(written) else problem
+
+
+def _written(spot: Spot, span: Span) -> str:
+    start = spot.document.line_starts[span.line - 1] + span.column - 1
+    return spot.document.text[start : start + span.length]
 
 
 def state(scope: Scope | None, *, inputs_only: bool = False) -> Callable[[Spot], Mapping[str, int] | None]:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
+from functools import cached_property
 from itertools import count
 from typing import Any
 
@@ -25,8 +26,9 @@ class Context:
     environment: Environment | None
     kinds: Mapping[str, Shape]
 
-    @property
+    @cached_property
     def scope(self) -> Scope | None:
+        """The names of the circuit."""
         return Scope.of(self.circuit.netlist) if self.circuit else None
 
 
@@ -41,7 +43,7 @@ def _nodes(spot: Spot, context: Context) -> tuple[str, ...] | None:
     scope = context.scope
     if scope is None:
         return names_among(None, "node")(spot)
-    known = [name for name in scope.signals if scope.net(name) in scope.gates]
+    known = [name for name in scope.signals if scope.net(name) in scope.gate_set]
     names = names_among(known, "node")(spot)
     return None if names is None else tuple(dict.fromkeys(scope.net(name) for name in names))
 
@@ -155,7 +157,7 @@ def _takes(option: Spot, check: str, shape: Shape | None, exists: bool) -> bool:
         if not exists:
             message = f"unknown key `{option.name}` in a property"
             help = nearest(option.name, known)
-            option.problem("unknown-key", message, "not an option", span=option.key_span, help=help)
+            option.problem("unknown-key", message, "not an option", at_key=True, help=help)
         return exists
     takes = sorted({*shape.required, *shape.optional})
     if option.name in takes:
@@ -163,9 +165,7 @@ def _takes(option: Spot, check: str, shape: Shape | None, exists: bool) -> bool:
     help = nearest(option.name, [*takes, "name", "check"])
     help = help or (f"its options are {listed(takes)}" if takes else "it takes no options")
     what = "does not take" if exists else "has no option"
-    option.problem(
-        "unknown-key", f"`{check}` {what} `{option.name}`", "not an option here", span=option.key_span, help=help
-    )
+    option.problem("unknown-key", f"`{check}` {what} `{option.name}`", "not an option here", at_key=True, help=help)
     return False
 
 

@@ -28,15 +28,16 @@ def read_text(path: str | Path, *, limit: int, named_at: Span | None = None) -> 
     return decode(raw, str(path))
 
 
-def check_file(path: Path, named_at: Span) -> None:
-    """Raise `InputError` when `path` is no file that can be opened."""
+def problem_of(path: Path, named_at: Span) -> Problem | None:
+    """What is wrong with `path` if it is no file that can be opened."""
     try:
         if stat.S_ISDIR(path.stat().st_mode):
             raise IsADirectoryError(errno.EISDIR, "")
         if not os.access(path, os.R_OK):
             raise PermissionError(errno.EACCES, "")
     except (OSError, ValueError) as error:
-        raise InputError(_unreadable(path, error, named_at)) from None
+        return _unreadable(path, error, named_at)
+    return None
 
 
 def decode(raw: bytes, file: str) -> str:

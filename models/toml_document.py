@@ -15,6 +15,9 @@ from settled.models.toml_positions import Path, Place, Positions, scan, string_o
 
 T = TypeVar("T")
 
+PROBLEM_LIMIT = 100
+"""How many problems of one file are listed."""
+
 _KINDS = {str: "a string", bool: "a boolean", int: "an integer", float: "a float", list: "an array", dict: "a table"}
 
 
@@ -26,6 +29,7 @@ class Document:
     text: str
     data: dict[str, Any] = field(default_factory=dict)
     problems: list[Problem] = field(default_factory=list)
+    _strings: dict[int, list[int]] = field(default_factory=dict)
 
     @cached_property
     def positions(self) -> Positions:
@@ -48,14 +52,28 @@ class Document:
         length = min(end, self.line_starts[line] - 1) - start
         return Span(self.file, line, start - first + 1, max(1, length))
 
+    def string_offsets(self, first: int, last: int) -> list[int]:
+        """Offset of each character that the string at `text[first:last]` stands for, and of its end."""
+        if first not in self._strings:
+            self._strings[first] = [first + offset for offset in string_offsets(self.text[first:last])]
+        return self._strings[first]
+
+    def note(self, *problems: Problem) -> None:
+        """Note problems; too many of them end the reading."""
+        self.problems.extend(problems)
+        if len(self.problems) >= PROBLEM_LIMIT:
+            last = f"there are more than {PROBLEM_LIMIT} problems; the rest of the file has not been looked at"
+            self.problems.append(Problem("too-many-problems", last))
+            self.finish()
+
     def finish(self) -> None:
         """Raise all problems noted, in the order of the file, those of other files last."""
         if not self.problems:
             return
 
         def order(problem: Problem) -> tuple[bool, str, int, int]:
-            at = problem.span or Span(self.file, 1, 1)
-            return at.file != self.file, at.file, at.line, at.column
+            at = problem.span
+            return (at.file != self.file, at.file, at.line, at.column) if at else (True, "\U0010ffff", 0, 0)
 
         raise InputError(sorted(dict.fromkeys(self.problems), key=order))
 
@@ -71,8 +89,7 @@ class Spot:
     @property
     def name(self) -> str:
         """The last key on the way here, for messages."""
-        keys = [part for part in self.path if isinstance(part, str)]
-        return keys[-1] if keys else self.document.file
+        return next((part for part in reversed(self.path) if isinstance(part, str)), self.document.file)
 
     @property
     def place(self) -> Place:
@@ -92,10 +109,8 @@ class Spot:
 
     def inside(self, start: int, end: int) -> Span:
         """The span of `value[start:end]` of a string value, through quotes and escapes."""
-        first, last = self.place.value
-        offsets = string_offsets(self.document.text[first:last])
-        pick = [first + offsets[min(i, len(offsets) - 1)] for i in (start, end)]
-        return self.document.span(*pick)
+        offsets = self.document.string_offsets(*self.place.value)
+        return self.document.span(*(offsets[min(i, len(offsets) - 1)] for i in (start, end)))
 
     def child(self, key: str | int) -> Spot:
         return Spot(self.document, (*self.path, key), self.value[key])
@@ -106,11 +121,19 @@ class Spot:
         return (self.child(key) for key in keys)
 
     def problem(
-        self, code: str, message: str, spot: str = "", *, span: Span | None = None, note: str = "", help: str = ""
+        self,
+        code: str,
+        message: str,
+        spot: str,
+        *,
+        span: Span | None = None,
+        at_key: bool = False,
+        note: str = "",
+        help: str = "",
     ) -> None:
-        """Note a problem with this value (or at `span`)."""
-        notes = (note,) if note else ()
-        self.document.problems.append(Problem(code, message, span or self.span, spot, notes, help))
+        """Note a problem with this value, at its key if `at_key`, or at `span`."""
+        place = span or (self.key_span if at_key else self.span)
+        self.document.note(Problem(code, message, place, spot, (note,) if note else (), help))
 
     def wrong_type(self, wanted: str, help: str = "") -> None:
         kind = _KINDS.get(type(self.value), "a date or time")
@@ -129,7 +152,7 @@ class Spot:
             if member.name not in known:
                 help = nearest(member.name, known) or f"the keys are {listed(known)}"
                 message = f"unknown key `{member.name}` in {of}"
-                member.problem("unknown-key", message, "not a key here", span=member.key_span, help=help)
+                member.problem("unknown-key", message, "not a key here", at_key=True, help=help)
 
     def missing(self, key: str, of: str, help: str = "") -> None:
         self.problem("missing-key", f"{of} needs `{key}`", f"no `{key}` here", help=help)

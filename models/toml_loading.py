@@ -10,7 +10,7 @@ from settled.models.source import Span
 from settled.models.toml_document import Document, where
 from settled.models.toml_positions import LEVELS, Place
 
-SIZE_LIMIT = 4 * 10**6
+SIZE_LIMIT = 2 * 10**6
 """Bytes of a property file that are read; a larger circuit belongs in a netlist file."""
 
 _WHERE = re.compile(r"(.*) \(at (?:line (\d+), column (\d+)|end of document)\)\Z", re.DOTALL)
@@ -62,7 +62,7 @@ def _in_words(what: str, found: str, text: str, at: int) -> tuple[str, str]:
     if what.startswith("Cannot"):
         return "a key or table is given twice", ""
     plain = what[:1].lower() + what[1:].replace("'", "`")
-    help = _BACKSLASH if "\\" in what or "hex" in what else ""
+    help = _BACKSLASH if what.startswith(("Unescaped", "Invalid hex")) else ""
     return (f"{plain}, found {found}" if plain.startswith("expected") else plain), help
 
 

@@ -19,7 +19,7 @@ def text(spot: Spot) -> str | None:
     """A string that is not empty."""
     word = string(spot)
     if word is not None and not word.strip():
-        spot.problem("bad-value", f"`{spot.name}` is empty", "nothing in it")
+        spot.problem("bad-value", f"expected text for `{spot.name}`, found an empty string", "nothing in it")
         return None
     return word
 

@@ -25,7 +25,7 @@ def netlist(circuit: Spot, name: str) -> Netlist | None:
     excitation = circuit.take("excitation", table)
     define = circuit.take("define", table)
     given = {"inputs": inputs, "excitation": excitation, "define": define}
-    complete = all(value is not None for key, value in given.items() if circuit.has(key))
+    complete = circuit.has("excitation") and not any(circuit.has(key) and given[key] is None for key in given)
     scope = Scope(inputs or (), _keys(excitation), dict.fromkeys(_keys(define))) if complete else None
     _check_names(circuit, excitation, define)
     if excitation is not None and not excitation.value:
@@ -62,14 +62,14 @@ def _check_names(circuit: Spot, *tables: Spot | None) -> None:
     """Every name of a line is one that expressions can read, and names one signal only."""
     given = circuit.child("inputs") if circuit.has("inputs") else None
     members = list(given.members()) if given and isinstance(given.value, list) else []
-    first = {member.value: member.span for member in members if isinstance(member.value, str)}
+    first = {member.value: member for member in members if isinstance(member.value, str)}
     for line in (line for spot in tables if spot for line in spot.members()):
         check_new(line.name, line, at_key=True)
         if line.name in first:
-            note = f"the other one stands at {where(first[line.name])}"
+            note = f"the other one stands at {where(first[line.name].span)}"
             message = f"`{line.name}` names two signals"
-            line.problem("duplicate-name", message, "again", span=line.key_span, note=note)
-        first.setdefault(line.name, line.key_span)
+            line.problem("duplicate-name", message, "again", at_key=True, note=note)
+        first.setdefault(line.name, line)
 
 
 def _check_cycles(define: Spot, defined: dict[str, Expr]) -> None:
@@ -79,7 +79,7 @@ def _check_cycles(define: Spot, defined: dict[str, Expr]) -> None:
         line = define.child(cycle[0])
         message = "definitions form a cycle: " + " reads ".join(f"`{name}`" for name in cycle)
         help = "a signal of a feedback loop needs a delay: move one of them to `[circuit.excitation]`"
-        line.problem("definition-cycle", message, "defined by itself", span=line.key_span, help=help)
+        line.problem("definition-cycle", message, "defined by itself", at_key=True, help=help)
         left = {name: body for name, body in left.items() if name not in cycle}
 
 
