@@ -26,16 +26,15 @@ class Limits:
 
     def tick(self, visited: int, changes: int) -> None:
         """Say how far the work has come. Raises `LimitReached` beyond a limit."""
+        deep = f"{changes} input change{'' if changes == 1 else 's'} deep"
         if visited > self.states:
-            self.refuse(
-                f"limit of {self.states:,} total states reached after {changes} input changes; raise it with --states N"
-            )
+            self.refuse(f"limit of {self.states:,} total states reached, {deep}; raise it with --states N")
         if self.spent() > self.seconds:
             self.refuse(
                 f"time limit of {self.seconds:g} s reached at {visited:,} total states; raise it with --seconds N"
             )
         if self.report is not None:
-            self.report(f"{visited:,} total states, {changes} input changes deep")
+            self.report(f"{visited:,} total states, {deep}")
 
     def refuse(self, reason: str) -> None:
         """Raise `LimitReached` with a reason."""

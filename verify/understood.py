@@ -15,9 +15,9 @@ MODELS = {
     "wire": "wire (every gate output and every connection carries a delay)",
 }
 CHANGES = {
-    "single": "one input at a time, in stable total states only",
-    "simultaneous": "any set of inputs in one instant, in stable total states only",
-    "burst": "any set of inputs, one after the other in any order, begun in stable total states only",
+    "single": "one input changes at a time, in stable total states only",
+    "simultaneous": "any set of inputs changes in one instant, in stable total states only",
+    "burst": "any set of inputs changes, one after the other in any order, begun in stable total states only",
 }
 
 
@@ -59,7 +59,7 @@ def _count(number: int, what: str) -> str:
 
 def _mode(environment: Environment) -> str:
     if environment.mode == "fundamental":
-        return f"fundamental mode; inputs change {CHANGES[environment.changes]}"
+        return f"fundamental mode; {CHANGES[environment.changes]}"
     return "input-output mode; an input may change whenever its guard is true"
 
 
