@@ -30,7 +30,7 @@ def render(table: TransitionTable, file: str, title: str, page: Page, *, outputs
         lines += [
             _line(state, row[part], len(states[0]), width, page) for state, row in zip(states, cells, strict=True)
         ]
-    return "\n".join(lines) + "\n"
+    return "\n".join(lines)
 
 
 def _legend(table: TransitionTable, outputs: bool) -> list[tuple[str, str]]:

@@ -164,7 +164,8 @@ def _steps(shown: Sequence[Row]) -> Column:
 
 
 def _switched(shown: Sequence[Row], page: Page) -> Column:
-    return Column(("switched",), tuple(tuple(_filled(row.switched, "/", page.width // 3)) for row in shown))
+    lines = (_filled(row.switched, "/", page.width // 3, page.width // 3) for row in shown)
+    return Column(("switched",), tuple(map(tuple, lines)))
 
 
 def _values(signal: str, shown: Sequence[Row], page: Page, broken: bool) -> Column:
@@ -178,16 +179,14 @@ def _notes(shown: Sequence[Row]) -> Column:
     return Column(("",), tuple((visible(row.note),) for row in shown))
 
 
-def _filled(text: str, ends: str, most: int, longest: int | None = None) -> list[str]:
-    """`text` in lines of about `most` columns, broken after one of the characters in `ends`.
+def _filled(text: str, ends: str, most: int, longest: int) -> list[str]:
+    """`text` in lines of at most `most` columns, broken after one of the characters in `ends`.
 
-    A stretch without such a character is broken after `longest` columns, if that is given.
+    A stretch without such a character may take up to `longest` columns and is broken after those.
     """
     pieces = re.findall(f"[^{ends}]*[{ends}]|[^{ends}]+", visible(text))
-    if longest is not None:
-        pieces = [p[i : i + longest] for p in pieces for i in range(0, len(p), longest)]
     lines = [""]
-    for piece in pieces:
+    for piece in (p[i : i + longest] for p in pieces for i in range(0, len(p), longest)):
         if lines[-1] and columns(lines[-1]) + columns(piece) > most:
             lines.append("")
         lines[-1] += piece
