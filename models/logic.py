@@ -224,13 +224,21 @@ def escape(name: str) -> str:
     return name if _PLAIN.match(name) and name not in ("stable", "excited") else f"\\{name} "
 
 
-def to_text(e: Expr) -> str:
-    """`e` in the operators of IEEE 1364 with the fewest parentheses; it reads back as the same function."""
+def leaf_text(e: Expr) -> str:
+    """A leaf as expressions of a property file have it."""
+    named = {"var": escape(e.name), "excited": f"excited({escape(e.name)})", "stable": "stable"}
+    return named.get(e.op, e.name)
+
+
+def to_text(e: Expr, leaf: Callable[[Expr], str] = leaf_text) -> str:
+    """`e` in the operators of IEEE 1364 with the fewest parentheses; it reads back as the same function.
+
+    `leaf` writes variables, constants, `stable` and `excited`.
+    """
 
     def visit(e: Expr, args: list[tuple[str, int]]) -> tuple[str, int]:
         if e.op in ("var", "const", "stable", "excited"):
-            leaf = {"var": escape(e.name), "stable": "stable", "excited": f"excited({escape(e.name)})"}
-            return leaf.get(e.op, e.name), 5
+            return leaf(e), 5
         own = _STRENGTH[e.op]
         least = own if e.op == "not" else own + 1
         inner = [text if strength >= least else f"({text})" for text, strength in args]
