@@ -11,6 +11,7 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.problems import Problem
 from settled.models.states import Run, excited, value
+from settled.verify.questions import Question
 
 FORMAT = 1
 
@@ -37,7 +38,7 @@ class Trace:
 
 @dataclass(frozen=True)
 class Result:
-    """The verdict on one property, with all that it rests on."""
+    """The verdict on one property, with all that it rests on. `question`: what the engine was asked."""
 
     name: str
     check: str
@@ -51,6 +52,7 @@ class Result:
     ranged: Mapping[str, int] = field(default_factory=dict)
     facts: Mapping[str, Any] = field(default_factory=dict)
     certificate: Mapping[str, Any] | None = None
+    question: Question | None = None
 
 
 @dataclass(frozen=True)

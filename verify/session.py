@@ -95,6 +95,7 @@ class Session:
             ranged=answer.ranged,
             facts=facts,
             certificate=answer.certificate,
+            question=question,
         )
 
     def ask(self, circuit: Circuit, question: Question) -> Answer:
