@@ -48,4 +48,6 @@ def step(circuit: Circuit, present: Mapping[str, Any], following: Mapping[str, A
     lawful = [z3.Implies(m, following[n] == t) for n, m, t in zip(circuit.nodes, moved, targets, strict=True)]
     if circuit.winners == "one":
         return z3.And(*kept, *lawful, z3.PbEq([(m, 1) for m in moved], 1))
-    return z3.And(*kept, *lawful, z3.Or(*moved))
+    moves = dict(zip(circuit.nodes, moved, strict=True))
+    apart = [z3.Not(z3.And(moves[a], moves[b])) for a, b in circuit.exclusive]
+    return z3.And(*kept, *lawful, *apart, z3.Or(*moved))

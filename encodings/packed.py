@@ -99,7 +99,18 @@ class Packed:
         """Steps in which some of `movers` switch: (index of the source, target) of each."""
         if self.circuit.winners == "one":
             return one_of(vertices, movers)
-        return parts_of(vertices, movers)
+        source, target = parts_of(vertices, movers)
+        if not self.circuit.pairs:
+            return source, target
+        apart = self._apart(vertices[source] ^ target)
+        return source[apart], target[apart]
+
+    def _apart(self, switched: Words) -> Bits:
+        """Whether no two nodes of an exclusive pair are among those that switched."""
+        result = np.ones(len(switched), bool)
+        for pair in map(np.uint64, self.circuit.pairs):
+            result &= switched & pair != pair
+        return result
 
     def steps(self, vertices: Words, movers: Words) -> tuple[Places, Words]:
         """Every step that is not the environment's own choice of a change; `movers` is `excited(vertices)`."""
@@ -114,7 +125,7 @@ class Packed:
         first, arrived = self._arrivals(vertices[waiting])
         origin = waiting[first]
         if self.circuit.winners == "any":
-            again, moved = parts_of(arrived, movers[origin])
+            again, moved = self.held(arrived, movers[origin])
             origin, arrived = np.concatenate([origin, origin[again]]), np.concatenate([arrived, moved])
         return np.concatenate([source, origin]), np.concatenate([target, arrived])
 

@@ -20,6 +20,7 @@ class Circuit:
     * `defined[s]`: a zero-delay signal as an expression over inputs and nodes.
     * `outputs`: names of inputs, nodes or defined signals.
     * `delay`, `winners`: the delay model and the switching rule, for the echo and for the meaning of a step.
+    * `exclusive`: pairs of nodes of which one step switches at most one: the grants of mutual-exclusion elements.
     * `notes`: sentences for the echo (such as the feedback lines chosen).
     """
 
@@ -32,6 +33,7 @@ class Circuit:
     delay: str = "feedback"
     winners: str = "any"
     notes: tuple[str, ...] = ()
+    exclusive: tuple[tuple[str, str], ...] = ()
 
     @cached_property
     def signals(self) -> tuple[str, ...]:
@@ -47,6 +49,11 @@ class Circuit:
     def input_mask(self) -> int:
         """The bits of the inputs in a packed total state."""
         return (1 << len(self.inputs)) - 1
+
+    @cached_property
+    def pairs(self) -> tuple[int, ...]:
+        """The pairs of `exclusive`, packed."""
+        return tuple(1 << self.place[a] | 1 << self.place[b] for a, b in self.exclusive)
 
     @cached_property
     def is_excited(self) -> dict[str, Expr]:

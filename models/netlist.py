@@ -38,6 +38,7 @@ class Netlist:
     * `groups`: gates that may be closed cells, by the name of the cell, instance or module: each entry lists
       the closed cells, one tuple of gate names each, that the name stands for.
     * `cells`: closed cells in force, by name, as the gates they hold. Flip-flops of a cell library come closed.
+    * `arbiters`: mutual-exclusion elements by name, as the two gates that are their grants (see `arbiter`).
     * `notes`: sentences for the echo, such as how a library cell was understood.
     """
 
@@ -50,7 +51,8 @@ class Netlist:
     groups: Mapping[str, tuple[tuple[str, ...], ...]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
     equations: bool = False
+    arbiters: Mapping[str, tuple[str, str]] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
-        for name in ("defined", "cells", "groups"):
+        for name in ("defined", "cells", "groups", "arbiters"):
             object.__setattr__(self, name, MappingProxyType(dict(getattr(self, name))))

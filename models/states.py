@@ -77,9 +77,14 @@ def choices(mask: int, winners: str) -> Iterator[int]:
     return subsets(mask) if winners == "any" else members(mask)
 
 
+def switchings(circuit: Circuit, mask: int) -> Iterator[int]:
+    """What may switch in one step of a circuit when the members of `mask` may: not both nodes of an exclusive pair."""
+    return (part for part in choices(mask, circuit.winners) if all(part & pair != pair for pair in circuit.pairs))
+
+
 def successors(circuit: Circuit, state: int) -> Iterator[int]:
     """The total states that one step reaches while the inputs are held: each node holds or follows."""
-    for switching in choices(excited(circuit, state), circuit.winners):
+    for switching in switchings(circuit, excited(circuit, state)):
         yield state ^ switching
 
 
@@ -158,7 +163,7 @@ class Behaviour:
 
     def held(self, at: Situation) -> Iterator[Situation]:
         """Steps of the nodes alone."""
-        for switching in choices(self.excited(at.state), self.circuit.winners):
+        for switching in switchings(self.circuit, self.excited(at.state)):
             yield Situation(at.state ^ switching, at.outstanding)
 
     def responses(self, at: Situation) -> Iterator[Situation]:
@@ -168,13 +173,13 @@ class Behaviour:
         for bit, rest in self.arrivals(at):
             yield Situation(at.state ^ bit, rest)
             if self.circuit.winners == "any":
-                for part in subsets(switching):
+                for part in switchings(self.circuit, switching):
                     yield Situation(at.state ^ bit ^ part, rest)
 
     def free(self, at: Situation) -> Iterator[Situation]:
         """Steps in input-output mode: nodes and inputs alike."""
         moving = self.excited(at.state) | self.allowed(at.state)
-        for switching in choices(moving, self.circuit.winners):
+        for switching in switchings(self.circuit, moving):
             if self.admits((at.state ^ switching) & self.circuit.input_mask):
                 yield Situation(at.state ^ switching)
 

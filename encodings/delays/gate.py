@@ -21,5 +21,6 @@ def place(netlist: Netlist, placement: Placement) -> Circuit:
         defined=defined,
         delay=DELAY,
         winners=placement.winners,
+        exclusive=tuple(netlist.arbiters.values()),
         notes=netlist.notes,
     )

@@ -1,9 +1,9 @@
 """Delay model `wire`: every gate output is a node and so is every connection, with no promise about forks.
 
 Connections are one for each primary input, `x>`, and one for each gate pin (per reading gate and distinct source),
-`source>reader`. A closed cell is entered through one connection per source, `source>cell`, and has none inside.
-Nets listed as isochronic have connections without delay. Source of the model: Brzozowski and Seger,
-"A unified framework for race analysis of asynchronous networks", 1989 (recalled).
+`source>reader`. A closed cell is entered through one connection per source, `source>cell`, and has none inside; a
+mutual-exclusion element is a closed cell. Nets listed as isochronic have connections without delay. Source of the
+model: Brzozowski and Seger, "A unified framework for race analysis of asynchronous networks", 1989 (recalled).
 """
 
 from __future__ import annotations
@@ -45,6 +45,7 @@ def place(netlist: Netlist, placement: Placement) -> Circuit:
         defined=defined,
         delay=DELAY,
         winners=placement.winners,
+        exclusive=tuple(netlist.arbiters.values()),
         notes=(*netlist.notes, *_notes(netlist, placement)),
     )
 
@@ -63,7 +64,8 @@ def closed_cells(netlist: Netlist, placement: Placement) -> dict[str, tuple[str,
             taken = {gate for members in cells.values() for gate in members}
             fresh = tuple(gate for gate in group if gate not in taken)
             cells |= {instance.get(group, name): fresh} if fresh else {}
-    return cells
+    taken = {gate for members in cells.values() for gate in members}
+    return cells | {name: grants for name, grants in netlist.arbiters.items() if not taken & set(grants)}
 
 
 def _notes(netlist: Netlist, placement: Placement) -> list[str]:

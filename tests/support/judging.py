@@ -19,7 +19,10 @@ from settled.verify.session import Session, Settings
 def netlist_of(circuit: Circuit) -> Netlist:
     """The circuit as equations."""
     gates = tuple(Gate(n, e) for n, e in circuit.excitation.items())
-    return Netlist(circuit.name, circuit.inputs, gates, circuit.outputs, circuit.defined, equations=True)
+    arbiters = {f"arbiter {i}": pair for i, pair in enumerate(circuit.exclusive, 1)}
+    return Netlist(
+        circuit.name, circuit.inputs, gates, circuit.outputs, circuit.defined, equations=True, arbiters=arbiters
+    )
 
 
 def session_of(

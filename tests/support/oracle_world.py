@@ -168,7 +168,12 @@ class World:
 
     def _held(self, state: State) -> list[State]:
         """The total states that one step reaches: a non-empty set of excited nodes switches, or exactly one."""
-        return [state ^ part for part in parts(self.excited(state), self.circuit.winners)]
+        return [state ^ part for part in self.switchings(self.excited(state))]
+
+    def switchings(self, names: Iterable[str]) -> Iterator[frozenset[str]]:
+        """What may switch in one step when `names` may: never both nodes of an exclusive pair."""
+        pairs = [frozenset(pair) for pair in self.circuit.exclusive]
+        return (p for p in parts(names, self.circuit.winners) if not any(pair <= p for pair in pairs))
 
     def oscillations(self, states: Iterable[State]) -> list[set[State]]:
         """The sustained oscillations that can be entered from `states` with the inputs held."""
@@ -269,7 +274,7 @@ class World:
         """One step of the circuit or change of the environment, whichever may come next."""
         if not self.fundamental:
             movers = self.excited(at.state) | self.willing(at.state)
-            after = (at.state ^ part for part in parts(movers, self.circuit.winners))
+            after = (at.state ^ part for part in self.switchings(movers))
             return {Situation(s) for s in after if self.admits(s)}
         picked = {self.begin(at.state, s) for s in self.schedules(at.state)} if self.ended(at) else set()
         return self.respond(at) | picked

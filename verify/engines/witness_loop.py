@@ -132,7 +132,7 @@ def _differ(query: Query, pairs: list[tuple[int, int]]) -> None:
 def restless(circuit: Circuit, vector: int) -> Run:
     """A fair run that goes round, under a vector without a stable state: from all nodes 0.
 
-    Every excited node switches at once (`any`), or the one excited for longest does (`one`).
+    Every excited node switches at once (`any`), or the one excited for longest does (`one`, or exclusive pairs).
     """
     seen: dict[tuple[int, tuple[int, ...]], int] = {}
     states = [vector]
@@ -140,7 +140,7 @@ def restless(circuit: Circuit, vector: int) -> Run:
     while (states[-1], queue) not in seen:
         seen[states[-1], queue] = len(states) - 1
         now = excited(circuit, states[-1])
-        if circuit.winners == "any":
+        if circuit.winners == "any" and not circuit.exclusive:
             states.append(states[-1] ^ now)
         else:
             queue = tuple(b for b in queue if b & now) + tuple(b for b in members(now) if b not in queue)
