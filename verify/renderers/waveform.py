@@ -1,0 +1,62 @@
+"""Waveforms: a value change dump (IEEE 1364) of each run, for the viewer that people already have.
+
+Untimed runs take one time unit a step. A loop is gone round twice and closed.
+"""
+
+from __future__ import annotations
+
+import io
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+from settled.verify.renderers.file_names import numbered, stems
+from settled.verify.renderers.verilog_text import fresh, unbroken
+from settled.verify.result import FileReport, Result, Trace
+from settled.verify.timing import unroll
+
+ROUNDS = 2
+
+
+def to_vcd(trace: Trace, result: Result) -> str:
+    """The run as a dump: a variable a signal, and beside them the number of the step and whether it is stable."""
+    from vcd import VCDWriter
+
+    out = io.StringIO()
+    note = " ".join(f"{result.name}: {trace.title}. {_clock(trace)}".replace("$end", "$ end").split())
+    writer = VCDWriter(out, timescale="1 ns", date="none", comment=_ascii(note), version="settled")
+    scope = unbroken(trace.circuit or "circuit")
+    step = trace.steps[0]
+    signals = {s: writer.register_var(scope, unbroken(s), "wire", 1, init=v) for s, v in step.state.items()}
+    about = fresh("run", [scope])
+    number = writer.register_var(about, "step", "integer", 32, init=0)
+    stable = writer.register_var(about, "stable", "wire", 1, init=int(step.stable))
+    places = unroll(trace, ROUNDS)
+    for time, place in enumerate(places):
+        step = trace.steps[place]
+        for name, value in step.state.items():
+            writer.change(signals[name], time, value)
+        writer.change(number, time, place)
+        writer.change(stable, time, int(step.stable))
+    writer.close(len(places))
+    return out.getvalue()
+
+
+def _clock(trace: Trace) -> str:
+    loop = f" The loop from step {trace.loop} on is shown twice." if trace.loop is not None else ""
+    return f"Untimed: one time unit is one step, only the order counts.{loop}"
+
+
+def _ascii(text: str) -> str:
+    return text.encode("ascii", "backslashreplace").decode()
+
+
+def files(reports: Sequence[FileReport], _: Mapping[str, Any]) -> dict[str, str]:
+    """A dump for each run of each property."""
+    return {
+        f"{name}.vcd": to_vcd(trace, result)
+        for _, result, stem in stems(reports)
+        for name, trace in zip(numbered(stem, len(result.traces)), result.traces, strict=True)
+    }
+
+
+FILES = files
