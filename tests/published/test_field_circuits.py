@@ -7,13 +7,16 @@ for that pin there, so each such gate stands in the data as a closed cell of its
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cache
 from typing import Any
 
 import pytest
 from graph_readings import Response, responses, walk_order
 from published_cases import Subject, cases, conjunction
 
+from settled.verify.result import Result
 from settled.verify.session import Session
 
 Case = dict[str, Any]
@@ -28,40 +31,85 @@ def subject(case: Case, delay: str) -> Subject:
     return Subject(tuple(case["inputs"]), case["gates"], delay, winners, case["cells"])
 
 
-def environment(case: Case, from_start: bool = True) -> dict[str, Any]:
-    """Single input changes, the forbidden input vectors left out."""
+def environment(case: Case) -> dict[str, Any]:
+    """Single input changes from the initial state, the forbidden input vectors left out."""
     assume = [f"~({expression})" for expression in case["forbidden_inputs"]]
-    start = subject(case, "gate").values(case["initial"]) if from_start else {}
-    return {"assume": assume, "start": start}
+    return {"assume": assume, "start": subject(case, "gate").values(case["initial"])}
 
 
-def named(circuit: Subject, session: Session, watched: Sequence[str] = ()) -> Iterator[tuple[tuple[str, str], Response]]:
-    """Every response by its start and change in the notation of the data."""
-    for response in responses(session, watched):
-        before, after = circuit.notation(session, response.before), circuit.notation(session, response.after)
-        moved = [f"{x}={b}" for x, a, b in zip(circuit.inputs, before, after, strict=False) if a != b]
-        yield (before, ",".join(moved)), response
+@dataclass(frozen=True)
+class Look:
+    """What the program says of a case: its verdicts, and every response by its start and change."""
+
+    circuit: Subject
+    session: Session
+    settles: Result
+    race_free: Result
+    hazard_free: Mapping[str, Result]
+    responses: Mapping[tuple[str, str], Response]
+
+    def failing(self) -> dict[tuple[str, str], tuple[str, list[str]]]:
+        """Verdict and ends over the gates of every change that fails, in the words of the data."""
+        return {name: self.verdict(response) for name, response in self.responses.items() if response.bad}
+
+    def verdict(self, response: Response) -> tuple[str, list[str]]:
+        ends = sorted(self.circuit.notation(self.session, end).split(".")[1] for end in response.ends)
+        return ("oscillation possible" if response.oscillates else "critical race"), ends
 
 
-def verdict(circuit: Subject, session: Session, response: Response) -> tuple[str, list[str]]:
-    """The verdict on one change in the words of the data, and the ends over the gates."""
-    ends = sorted(circuit.notation(session, end).split(".")[1] for end in response.ends)
-    word = "oscillation possible" if response.oscillates else "critical race" if len(ends) > 1 else "no race"
-    return word, ends
+@cache
+def look(name: str, delay: str) -> Look:
+    """The look at the case of that name."""
+    case = next(c for c in CASES if c["id"] == name)
+    circuit, outputs = subject(case, delay), case["outputs"]
+    hazards = [{"check": "hazard-free", "signals": [output]} for output in outputs]
+    settles, race, *clean = circuit.check(environment(case), {"check": "settles"}, {"check": "race-free"}, *hazards)
+    session = circuit.session(environment(case))
+    named = {changed(circuit, session, r): r for r in responses(session, outputs)}
+    return Look(circuit, session, settles, race, dict(zip(outputs, clean, strict=True)), named)
+
+
+def changed(circuit: Subject, session: Session, response: Response) -> tuple[str, str]:
+    """Start and change of a response in the notation of the data."""
+    before, after = circuit.notation(session, response.before), circuit.notation(session, response.after)
+    moved = [f"{x}={b}" for x, a, b in zip(circuit.inputs, before, after, strict=False) if a != b]
+    return before, ",".join(moved)
 
 
 @each_case
 def test_verdicts_and_extent(case: Case, delay: str) -> None:
-    data = case[f"{delay}_delays"]
-    circuit = subject(case, delay)
-    results = circuit.check(environment(case), {"check": "settles"}, {"check": "race-free"})
-    for result in results:
+    data, found = case[f"{delay}_delays"], look(case["id"], delay)
+    for result in (found.settles, found.race_free):
         assert result.ranged["stable_states"] == data["reached_stable_states"]
-        assert result.ranged["input_changes"] == data["input_changes_checked"]
+        assert result.ranged["input_changes"] == data["input_changes_checked"] == len(found.responses)
     rings = any(f["verdict"] == "oscillation possible" for f in data["failing"])
     races = any(len(f["ends"]) > 1 for f in data["failing"])
-    expected = ["refuted" if fails else "proved" for fails in (rings, races)]
-    assert [r.verdict for r in results] == expected, case["source"]
+    assert found.settles.verdict == ("refuted" if rings else "proved"), case["source"]
+    assert found.race_free.verdict == ("refuted" if races else "proved"), case["source"]
+
+
+@each_case
+def test_every_failing_change(case: Case, delay: str) -> None:
+    data, found = case[f"{delay}_delays"], look(case["id"], delay)
+    listed = {(f["start"], f["change"]): (f["verdict"], sorted(f["ends"])) for f in data["failing"]}
+    assert found.failing() == listed, case["source"]
+    assert max(r.passed for r in found.responses.values()) == data["largest_state_set"]
+    for f in data["failing"]:
+        response = found.responses[f["start"], f["change"]]
+        end = walk_order(found.session, response.before, f["order"])
+        assert response.ends[end] == len(f["order"].split()), "the recorded order is a shortest one to its end"
+
+
+@each_case
+def test_every_hazard(case: Case, delay: str) -> None:
+    """Hazards are listed for the changes that settle in one way only."""
+    data, found = case[f"{delay}_delays"], look(case["id"], delay)
+    some = {output for response in found.responses.values() for output in response.flickers}
+    assert {output for output, r in found.hazard_free.items() if r.verdict == "refuted"} == some
+    hazards = {(*name, output) for name, r in found.responses.items() if not r.bad for output in r.flickers}
+    assert {name: hazard(found.circuit, *name) for name in hazards} == {
+        (h["start"], h["change"], h["output"]): (h["kind"], len(h["order"].split())) for h in data["hazards"]
+    }, case["source"]
 
 
 @pytest.mark.parametrize("case", [pytest.param(c, id=c["id"]) for c in CASES])
@@ -77,37 +125,6 @@ def test_stable_total_states(case: Case) -> None:
     assert result.verdict == "proved"
     assert result.ranged["stable_states"] == case["stable_total_states"]
     assert len(set(listed)) in (0, case["stable_total_states"])
-
-
-@each_case
-def test_every_failing_change(case: Case, delay: str) -> None:
-    data = case[f"{delay}_delays"]
-    circuit = subject(case, delay)
-    session = circuit.session(environment(case))
-    found = dict(named(circuit, session))
-    failing = {name: verdict(circuit, session, r) for name, r in found.items() if r.bad}
-    assert failing == {(f["start"], f["change"]): (f["verdict"], sorted(f["ends"])) for f in data["failing"]}
-    assert max(r.passed for r in found.values()) == data["largest_state_set"]
-    for f in data["failing"]:
-        response = found[f["start"], f["change"]]
-        end = walk_order(session, response.before, f["order"])
-        assert response.ends[end] == len(f["order"].split()), "the recorded order is a shortest one to its end"
-
-
-@pytest.mark.parametrize(("case", "delay"), [p for p in UNDER_DELAYS if p.values[0]["outputs"]])
-def test_every_hazard(case: Case, delay: str) -> None:
-    """Hazards are listed for the changes that settle in one way only."""
-    data = case[f"{delay}_delays"]
-    circuit = subject(case, delay)
-    found = dict(named(circuit, circuit.session(environment(case)), case["outputs"]))
-    some = {output for response in found.values() for output in response.flickers}
-    checks = [{"check": "hazard-free", "signals": [output]} for output in case["outputs"]]
-    results = circuit.check(environment(case), *checks)
-    assert {o for o, r in zip(case["outputs"], results, strict=True) if r.verdict == "refuted"} == some
-    hazards = {(*name, output) for name, r in found.items() if not r.bad for output in r.flickers}
-    assert {name: hazard(circuit, *name) for name in hazards} == {
-        (h["start"], h["change"], h["output"]): (h["kind"], len(h["order"].split())) for h in data["hazards"]
-    }
 
 
 def hazard(circuit: Subject, before: str, change: str, output: str) -> tuple[str, int]:

@@ -82,16 +82,19 @@ def guarded(case: Case, question: Question) -> dict[str, Any]:
     return {"mode": "input-output", "start": circuit.values(question["from"]), "inputs": inputs}
 
 
-ALWAYS = [
-    pytest.param(case, question, model, id=f"{case['id']}: {question['label']}-{model}")
-    for case in CASES
-    for question in case["extra"]
-    if question["kind"] == "always"
-    for model in question["models"]
-]
+def always(wanted: str) -> pytest.MarkDecorator:
+    """Every question of the kind `always` that has the key `wanted`, with each rule that the data answers it for."""
+    found = [
+        pytest.param(case, question, model, id=f"{case['id']}: {question['label']}-{model}")
+        for case in CASES
+        for question in case["extra"]
+        if question["kind"] == "always" and wanted in question
+        for model in question["models"]
+    ]
+    return pytest.mark.parametrize(("case", "question", "model"), found)
 
 
-@pytest.mark.parametrize(("case", "question", "model"), ALWAYS)
+@always("expr")
 def test_always(case: Case, question: Question, model: str) -> None:
     expected = question["result"][model]
     circuit = subject(case, winners="one" if model == "gate_single" else "any")
@@ -109,10 +112,7 @@ def test_always(case: Case, question: Question, model: str) -> None:
         assert sum(map(bool, moved)) <= sum(map(bool, recorded)), "no run with more input changes than the recorded one"
 
 
-WITHDRAWN = [p for p in ALWAYS if "withdrawn" in p.values[1]]
-
-
-@pytest.mark.parametrize(("case", "question", "model"), WITHDRAWN)
+@always("withdrawn")
 def test_withdrawn_excitations(case: Case, question: Question, model: str) -> None:
     """A node loses its excitation without having switched: those of the data (`node by event`) and no others."""
     circuit = subject(case, winners="one" if model == "gate_single" else "any")

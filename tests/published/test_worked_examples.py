@@ -159,7 +159,7 @@ def realised(case: Case) -> Subject:
     for row, entries in case["flow_table"].items():
         for column, after in entries.items():
             assert sum(a != b for a, b in zip(codes[row], codes[after], strict=True)) <= 1
-            here = {**dict(zip(inputs, map(int, column), strict=True)), **dict(zip(nodes, map(int, codes[row]), strict=True))}
+            here = dict(zip((*inputs, *nodes), map(int, column + codes[row]), strict=True))
             for node, bit in zip(nodes, codes[after], strict=True):
                 terms[node] += [conjunction(here)] if bit == "1" else []
     return Subject(inputs, {n: " | ".join(t) for n, t in terms.items()})

@@ -53,7 +53,8 @@ class Subject:
 
     def check(self, environment: Table, *properties: Table) -> tuple[Result, ...]:
         """The results of a property file."""
-        return check("case.toml", text=self.file(environment, properties)).results
+        results: tuple[Result, ...] = check("case.toml", text=self.file(environment, properties)).results
+        return results
 
     def session(self, environment: Table, *properties: Table) -> Session:
         """A session on the circuit, for what is read off it directly."""
