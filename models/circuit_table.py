@@ -134,11 +134,13 @@ def _under_delays(spot: Spot, netlist: Netlist | None, default: str) -> CircuitS
     _check_delay_keys(spot, delay)
     winners = spot.take("winners", one_of("any", "one")) or "any"
     isochronic = spot.take("isochronic", names_among(_connected(scope) if scope else None, "net")) or ()
-    closed = spot.take("closed", names_among(netlist.groups if netlist else None, "module or instance")) or ()
+    closed: tuple[str, ...] | None = ()
+    if spot.has("file"):
+        closed = spot.take("closed", names_among(netlist.groups if netlist else None, "module or instance"))
     if netlist is None or scope is None:
         return None
     feedback = None if delay != "feedback" or netlist.equations else _feedback(spot, scope, netlist)
-    return CircuitSource(netlist, delay, feedback, winners, _nets(isochronic, scope), closed, spot.span)
+    return CircuitSource(netlist, delay, feedback, winners, _nets(isochronic, scope), closed or (), spot.span)
 
 
 def _check_delay_keys(spot: Spot, delay: str) -> None:

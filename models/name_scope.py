@@ -19,8 +19,8 @@ NEAREST_LIMIT = 2_000
 """Among more names than this no near one is looked for."""
 
 _UNREADABLE = re.compile(r"[\s\x00-\x1f\x7f]|\A\\")
-_SWALLOWED = re.compile(r"\\[btnfr]\Z")
-_CONTROL = "`{}` in double quotes is a control character; write the expression in single quotes"
+_SWALLOWED = re.compile(r"(?<!\\)(?:\\\\)*(\\b|\\[tnfr](?=[A-Za-z_0-9]))[^\s\\]*\Z")
+"""A control character in TOML's spelling that a word follows up to the end."""
 
 
 @dataclass(frozen=True)
@@ -98,10 +98,14 @@ def unknown(spot: Spot, name: str, known: Collection[str], what: str, at_key: bo
     spot.problem("unknown-name", f"unknown {what} `{name}`", "not known", at_key=at_key, help=suggestion(name, known))
 
 
+def near(name: str, known: Collection[str]) -> str:
+    """The nearest known name, if there are not too many of them."""
+    return nearest(name, known) if len(known) <= NEAREST_LIMIT else ""
+
+
 def suggestion(name: str, known: Collection[str]) -> str:
     """The nearest known name; all of them when none is near and they are few."""
-    near = nearest(name, known) if len(known) <= NEAREST_LIMIT else ""
-    return near or (f"the known names are {listed(known)}" if 0 < len(known) <= 8 else "")
+    return near(name, known) or (f"the known names are {listed(known)}" if 0 < len(known) <= 8 else "")
 
 
 def expression(
@@ -151,20 +155,22 @@ def _check_name(spot: Spot, at: NameAt, scope: Scope, inputs_only: bool) -> bool
 
 
 def _hint(spot: Spot, at: NameAt, known: Collection[str]) -> str:
-    """The nearest name, unless TOML has turned the backslash of an escaped name into a control character."""
-    before = _written(spot, spot.inside(at.start - 1, at.start)) if at.start else ""
-    return _CONTROL.format(before) if _SWALLOWED.match(before) else suggestion(at.name, known)
+    return near(at.name, known) or _swallowed(spot, spot.inside(at.start, at.end)) or suggestion(at.name, known)
 
 
 def _explained(spot: Spot, problem: Problem) -> Problem:
-    """`problem` of an expression, with a cure where TOML has made a control character of a backslash."""
-    written = _written(spot, problem.span) if problem.span else ""
-    return replace(problem, help=_CONTROL.format(written)) if _SWALLOWED.match(written) else problem
+    help = _swallowed(spot, problem.span) if problem.span else ""
+    return replace(problem, help=help) if help else problem
 
 
-def _written(spot: Spot, span: Span) -> str:
-    start = spot.document.line_starts[span.line - 1] + span.column - 1
-    return spot.document.text[start : start + span.length]
+def _swallowed(spot: Spot, span: Span) -> str:
+    """A cure where the word that ends at `span` lost its backslash, which TOML took for a control character."""
+    start, document = spot.place.value[0], spot.document
+    end = document.line_starts[span.line - 1] + span.column - 1 + span.length
+    match = _SWALLOWED.search(document.text[start:end]) if document.text[start] == '"' else None
+    if match is None:
+        return ""
+    return f"`{match[1]}` in double quotes is a control character; write the expression in single quotes"
 
 
 def state(scope: Scope | None, *, inputs_only: bool = False) -> Callable[[Spot], Mapping[str, int] | None]:

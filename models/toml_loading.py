@@ -47,6 +47,8 @@ def _not_toml(document: Document, error: str) -> list[Problem]:
     else:
         at = document.line_starts[int(line) - 1] + int(column) - 1
         found = "the end of the line" if document.text[at : at + 1] in ("\n", "") else f"`{document.text[at]}`"
+    if what.startswith("Unescaped"):
+        at = document.text.rindex("\\", 0, at)
     message, help = _in_words(what, found, document.text, at)
     return [Problem("toml-syntax", message, document.span(at, at + 1), "not TOML from here on", help=help)]
 
@@ -61,8 +63,10 @@ def _in_words(what: str, found: str, text: str, at: int) -> tuple[str, str]:
         return "expected a closing quote, found the end of the line", ""
     if what.startswith("Cannot"):
         return "a key or table is given twice", ""
+    if what.startswith("Unescaped"):
+        return f"`\\{text[at + 1]}` is no escape of TOML", _BACKSLASH
     plain = what[:1].lower() + what[1:].replace("'", "`")
-    help = _BACKSLASH if what.startswith(("Unescaped", "Invalid hex")) else ""
+    help = _BACKSLASH if what == "Invalid hex value" else ""
     return (f"{plain}, found {found}" if plain.startswith("expected") else plain), help
 
 
