@@ -31,6 +31,7 @@ from settled.models.readers.liberty import Cell, read_cells
 from settled.models.readers.library_cells import stub, unreadable
 from settled.models.readers.verilog_elaborate import elaborate
 from settled.models.readers.verilog_hierarchy import flatten
+from settled.models.readers.verilog_text import PROBLEMS
 from settled.models.readers.verilog_wiring import Wiring
 from settled.models.text_file import read_text as text_of_file
 
@@ -63,8 +64,9 @@ def read_text(text: str, path: str, *, top: str | None = None, cells: Mapping[st
     design = elaborate(text, path, top, stubs, legacy=Path(path).suffix.lower() == ".v")
     flat = flatten(design, cells)
     found = design.problems()
-    wiring = Wiring(design, flat, cells)
-    wiring.problems[:0] = found
+    if any(problem.code == "duplicate-name" for problem in flat.problems):
+        raise InputError(_ordered(found + flat.problems))  # names do not say which net is meant
+    wiring = Wiring(design, flat, cells, found)
     netlist = wiring.netlist()
     if wiring.problems:
         raise InputError(_ordered(wiring.problems))
@@ -87,4 +89,5 @@ def _ordered(problems: Sequence[Problem]) -> list[Problem]:
     for problem in problems:
         span = problem.span
         places.setdefault((span.file, span.line, span.column) if span else problem, problem)
-    return sorted(places.values(), key=lambda p: (p.span.file, p.span.line, p.span.column) if p.span else ("", 0, 0))
+    order = sorted(places.values(), key=lambda p: (p.span.file, p.span.line, p.span.column) if p.span else ("", 0, 0))
+    return order[:PROBLEMS]

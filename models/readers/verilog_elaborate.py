@@ -16,15 +16,13 @@ import pyslang
 from pyslang import ast, syntax
 
 from settled.models.problems import InputError, Problem, nearest
-from settled.models.readers.verilog_text import scan
+from settled.models.readers.verilog_text import PROBLEMS, scan
 from settled.models.source import Span
 
 _PREFIX = '`begin_keywords "1364-2005"\n'
 _FIRST_PIECE = 200_000
-_MOST_PROBLEMS = 100
 _CODES = {
     "ImplicitNet": ("implicit-net", "declare the net before it is used"),
-    "ImplicitNetPortNoDefault": ("implicit-net", "declare the net before it is used"),
     "Redefinition": ("redefined-name", "give each net one declaration"),
     "RedefinitionDifferentType": ("redefined-name", "give each net one declaration"),
     "DuplicateDefinition": ("redefined-name", "give each module one definition"),
@@ -123,7 +121,7 @@ def elaborate(text: str, file: str, top: str | None, stubs: Mapping[str, str], l
     words = scan(text, file)
     prefix = _PREFIX if legacy else ""
     if len(text) > _FIRST_PIECE:
-        _parse(text[: text.rfind("\n", 0, _FIRST_PIECE) + 1], file, prefix, _MOST_PROBLEMS)
+        _parse(text[: text.rfind("\n", 0, _FIRST_PIECE) + 1], file, prefix, PROBLEMS)
     source, bag, tree = _parse(text, file, prefix)
     modules = _modules(source, tree)
     _check_top(source, modules, top)
@@ -146,14 +144,14 @@ def _parse(text: str, file: str, prefix: str, tolerated: int = 0) -> tuple[Text,
     tree = syntax.SyntaxTree.fromBuffer(buffer, manager, bag)
     errors = [d for d in tree.diagnostics if d.isError()]
     if len(errors) > tolerated:
-        raise InputError(_problems(source, errors[:_MOST_PROBLEMS], "syntax"))
+        raise InputError(_problems(source, errors[:PROBLEMS], "syntax"))
     return source, bag, tree
 
 
 def _options(top: str | None) -> ast.CompilationOptions:
     options = ast.CompilationOptions()
     options.flags = ast.CompilationFlags.IgnoreUnknownModules
-    options.errorLimit = _MOST_PROBLEMS
+    options.errorLimit = PROBLEMS
     options.topModules = {top} if top is not None else set()
     return options
 
@@ -170,6 +168,8 @@ def _modules(source: Text, tree: syntax.SyntaxTree) -> dict[str, Span]:
             message = "something other than a module or a primitive stands outside the modules"
             help = "accepted: modules and combinational primitives"
             problems.append(Problem("construct", message, source.of(member), "found here", help=help))
+        if len(problems) == PROBLEMS:
+            break
     if problems:
         raise InputError(problems)
     return found
@@ -190,7 +190,8 @@ def _choose(source: Text, compilation: ast.Compilation, modules: Mapping[str, Sp
         return tops[0]
     if not tops:
         message = "every module is instantiated by another one, so none is the top"
-        raise InputError(Problem("recursion", message, next(iter(modules.values())), "one of them"))
+        help = "say which one is meant with `top`"
+        raise InputError(Problem("recursion", message, next(iter(modules.values())), "one of them", help=help))
     chosen = {instance.name for instance in tops}
     names = [name for name in modules if name in chosen]
     listed = ", ".join(f"`{name}`" for name in names[:10]) + (", ..." if len(names) > 10 else "")

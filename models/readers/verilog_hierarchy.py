@@ -197,7 +197,7 @@ class _Walk:
         self.flat.nets[symbol] = names
         for name in names:
             other = self.flat.places.setdefault(name, symbol)
-            if other != symbol:
+            if other != symbol and other.parentScope != symbol.parentScope or other.name != symbol.name:
                 self._clash(name, symbol, other)
 
     def _clash(self, name: str, symbol: ast.Symbol, other: ast.Symbol) -> None:

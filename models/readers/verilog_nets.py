@@ -58,12 +58,12 @@ class Nets:
     def drive(self, net: str, by: User) -> None:
         """Note the driver of a net; a second one is an error."""
         name = self.name(net)
-        first = self.drivers.setdefault(name, by)
-        if first is not by:
+        if name in self.drivers:
             message = f"net `{name}` has two drivers"
-            notes = (f"one is {first}", f"the other one is {by}")
+            notes = (f"one is {self.drivers[name]}", f"the other one is {by}")
             help = "accepted: one driver a net, without tri-state or wired logic"
             raise InputError(Problem("multiply-driven", message, by.span, "one of them", notes, help))
+        self.drivers[name] = by
 
     def read(self, net: str, by: User) -> None:
         """Note that a net must have a driver."""

@@ -19,6 +19,8 @@ OPERATORS = 5_000
 """How many operators one statement may hold."""
 EXPANSION = 10_000_000
 """How many characters the uses of macros may stand for, taken together."""
+PROBLEMS = 100
+"""How many problems of one file are told at once."""
 
 _TOKEN = re.compile(
     r"""(?P<skip>//[^\n]*|/\*(?:.*?\*/|.*)|"(?:[^"\\\n]|\\.)*"|(?<!\()\*\)|\(\*(?!\s*\)))
@@ -87,6 +89,8 @@ def scan(text: str, file: str) -> set[str]:
         if state.operators > OPERATORS:
             message = f"one statement holds more than the limit of {OPERATORS:,} operators"
             state.problem(token, "too-large", message, "one too many", "name parts of it as nets of their own")
+            break
+        if len(state.problems) == PROBLEMS:
             break
     if state.problems:
         raise InputError(state.problems)
@@ -166,7 +170,7 @@ def _directive(state: _Scan, token: re.Match[str]) -> None:
         if state.expansion > EXPANSION:
             message = f"the uses of macros stand for more than {EXPANSION:,} characters"
             state.problem(token, "too-large", message, "this use", "write the text out, or in modules")
-            state.macros.clear()
+            raise InputError(state.problems)
     elif name == "include":
         help = "put the modules into one file; cells may come from a Liberty file, see `library`"
         state.problem(token, "include", "`` `include`` is not accepted", "other file named here", help)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 
@@ -39,7 +39,8 @@ class _Port:
 class Wiring:
     """Reads the items of a flat design in their order."""
 
-    def __init__(self, design: Design, flat: Flat, library: Mapping[str, Cell]) -> None:
+    def __init__(self, design: Design, flat: Flat, library: Mapping[str, Cell], known: Sequence[Problem]) -> None:
+        """`known`: what the elaborator says against the design."""
         self.design, self.flat, self.library = design, flat, library
         self.text = design.text
         self.expressions = Expressions(flat.nets, design.text, design.top)
@@ -48,8 +49,9 @@ class Wiring:
         self.fed: set[str] = set()
         self.cells: dict[str, tuple[str, ...]] = {}
         self.notes: dict[str, None] = {}
-        self.units: set[str] = set()
-        self.problems = list(flat.problems)
+        self.unit = ""
+        self.problems = [*known, *flat.problems]
+        self.skipped: list[Span] = []
 
     def netlist(self) -> Netlist:
         """The netlist; it is good for nothing when `problems` is not empty afterwards."""
@@ -57,16 +59,19 @@ class Wiring:
             if isinstance(item.symbol, ast.InstanceSymbol):
                 self._bind(item, item.symbol)
         self.nets.joined_all()
-        inputs, outputs = (self._top_ports(direction) for direction in (_In, ast.ArgumentDirection.Out))
+        inputs, outputs = self._top_ports(_In), self._top_ports(ast.ArgumentDirection.Out)
         for name, span in inputs.items():
             with self._collect():
                 self.nets.drive(name, User("an input of the top module", span))
         for name, span in outputs.items():
             self.nets.read(name, User("the top module as an output", span))
         for item in self.flat.items:
-            with self._collect():
+            with self._collect(item):
                 self._read(item)
         self.problems += self.nets.loops()
+        if not self.problems and self.skipped:
+            message = "something here cannot be read as gates"
+            self.problems += [Problem("elaboration", message, span) for span in self.skipped]
         if not self.problems:
             self._check_driven()
         return Netlist(
@@ -81,11 +86,14 @@ class Wiring:
         )
 
     @contextmanager
-    def _collect(self) -> Iterator[None]:
+    def _collect(self, item: Item | None = None) -> Iterator[None]:
+        """Note the problems of one item. One without a problem is something that the elaborator speaks against."""
         try:
             yield
         except InputError as error:
             self.problems += error.problems
+            if not error.problems:
+                self.skipped.append(self._span(item) if item else self.text.span(self.design.top.location))
 
     # ---- ports -------------------------------------------------------------------------------------------------
 
@@ -94,7 +102,8 @@ class Wiring:
         for port in self.design.top.body.portList:
             if isinstance(port, _PORTS) and port.direction == direction:
                 span = self.text.span(port.location)
-                found.update((name, span) for name in self._inside(port))
+                with self._collect():
+                    found.update((name, span) for name in self._inside(port))
         return found
 
     def _inside(self, port: ast.Symbol) -> list[str]:
@@ -112,12 +121,12 @@ class Wiring:
         ports: list[_Port] = []
         self.ports[symbol] = ports
         for connection in symbol.portConnections:
-            with self._collect():
+            with self._collect(item):
                 ports += self._connect(item, connection)
         by = User(f"instance `{item.name}`", self._span(item))
         for port in ports:
             if port.outer is not None and port.outer.plain and port.outer.value.op == "var":
-                with self._collect():
+                with self._collect(item):
                     self.nets.join(port.inner, port.outer.value.name, by)
             if port.is_input:
                 self.fed.add(port.inner)
@@ -183,6 +192,8 @@ class Wiring:
     def _cell(self, item: Item, cell: Cell, ports: list[_Port]) -> None:
         span = self._span(item)
         nets = {port.pin: self.nets.name(port.inner) for port in ports}
+        if len(nets) < len(cell.pins):
+            raise InputError(())  # a pin has a problem of its own
         open_pins = {port.pin for port in ports if port.outer is None}
         made = library_cells.gates(cell, item.name, nets, open_pins, span)
         by = User(f"cell `{cell.name}` of instance `{item.name}`", span)
@@ -276,9 +287,9 @@ class Wiring:
         if not exact:
             self.notes[_TYPICAL] = None
         scale = item.symbol.parentScope.timeScale
-        self.units.add(str(scale and scale.base))
-        if len(self.units) == 2:
-            self.units.add("reported")
+        unit = str(scale and scale.base)
+        self.unit = self.unit or unit
+        if unit != self.unit:
             message = "delays of this design are in different units of time"
             raise InputError(Problem("mixed-timescale", message, span, help="give all modules one `` `timescale``"))
         return bounds
@@ -300,13 +311,11 @@ class Wiring:
             self.problems.append(Problem("undriven-net", message, span, "net", (note,), help))
 
     def _groups(self) -> dict[str, tuple[tuple[str, ...], ...]]:
-        groups: dict[str, list[tuple[str, ...]]] = {}
+        groups: dict[str, dict[tuple[str, ...], None]] = {}
         for owner in self.flat.owners:
             for name in (owner.module, owner.path):
-                members = groups.setdefault(name, [])
-                if owner.gates and tuple(owner.gates) not in members:
-                    members.append(tuple(owner.gates))
-        return {name: tuple(members) for name, members in groups.items()}
+                groups.setdefault(name, {})[tuple(owner.gates)] = None
+        return {name: tuple(filter(None, members)) for name, members in groups.items()}
 
     def _span(self, item: Item) -> Span:
         """An assignment as a whole; of a gate or an instance the name, or the kind when it has none."""
