@@ -12,6 +12,9 @@ from settled.verify.renderers.page import columns, visible
 WIDTH = 110
 """Columns of the user's line that are shown; of a longer one, the part around the spot."""
 
+LONGEST = 600
+"""Characters of a sentence that are shown."""
+
 _STYLES = {"error": "1;31", "message": "1", "frame": "34", "mark": "1;31", "help": "32"}
 
 Paint = Callable[[str, str], str]
@@ -48,17 +51,22 @@ def as_json(problems: Iterable[Problem]) -> list[dict[str, Any]]:
 def _paragraph(problem: Problem, lines: Callable[[str], list[str]], paint: Paint) -> list[str]:
     """The lines of one problem."""
     span = problem.span
-    shown = [f"{paint('error', f'error[{problem.code}]')}: {paint('message', visible(problem.message))}"]
+    shown = [f"{paint('error', f'error[{problem.code}]')}: {paint('message', _shown(problem.message))}"]
     margin = " " * len(str(span.line)) if span else " "
     if span is not None:
-        shown.append(f"{margin}{paint('frame', '-->')} {visible(span.file)}:{span.line}:{span.column}")
+        shown.append(f"{margin}{paint('frame', '-->')} {_shown(span.file)}:{span.line}:{span.column}")
         source = lines(span.file)
         if span.line <= len(source) and any(source):
             shown += _excerpt(problem, source[span.line - 1], margin, paint)
     sign = paint("frame", "=")
-    shown += [f"{margin} {sign} note: {visible(note)}" for note in problem.notes]
-    shown += [f"{margin} {sign} {paint('help', 'help')}: {visible(problem.help)}"] if problem.help else []
+    shown += [f"{margin} {sign} note: {_shown(note)}" for note in problem.notes]
+    shown += [f"{margin} {sign} {paint('help', 'help')}: {_shown(problem.help)}"] if problem.help else []
     return shown
+
+
+def _shown(text: str) -> str:
+    """A sentence; of a very long one, both ends."""
+    return visible(text if len(text) <= LONGEST else f"{text[: LONGEST - 100]} ... {text[-95:]}")
 
 
 def _excerpt(problem: Problem, line: str, margin: str, paint: Paint) -> list[str]:
