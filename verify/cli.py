@@ -204,8 +204,9 @@ def table(file: File, outputs: Outputs = False) -> None:
     """
     from settled.models.problems import InputError
     from settled.verify.inputs import locate
+    from settled.verify.placing import placed
     from settled.verify.renderers.table import render
-    from settled.verify.session import check_inputs, load, placed
+    from settled.verify.session import check_inputs, load
     from settled.verify.terminal import Screen, page
     from settled.verify.transition_table import transition_table
 

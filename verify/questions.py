@@ -21,6 +21,11 @@ from settled.verify.limits import Limits
 class Question:
     """What is asked. The answer `refuted` means that the failure the question speaks of exists."""
 
+    @property
+    def circuits(self) -> tuple[Circuit, ...]:
+        """Circuits beside the one that is asked about, whose runs an answer may show."""
+        return ()
+
 
 @dataclass(frozen=True)
 class StableCount(Question):
@@ -94,6 +99,25 @@ class PowersUp(Question):
     """
 
     vectors: tuple[int, ...]
+
+
+@dataclass(frozen=True)
+class Differs(Question):
+    """Can the circuit and `other`, which get the same changes, come to differ on `outputs`, or not settle?
+
+    True when some start state has no good partner (semantics of equivalence). `other` has the same inputs in the same
+    order, a name of its own, and `outputs` among its outputs. `transients`: an output of `other` must not have a
+    hazard where that of the circuit has none, either.
+    """
+
+    other: Circuit
+    outputs: tuple[str, ...]
+    transients: bool = False
+
+    @property
+    def circuits(self) -> tuple[Circuit, ...]:
+        """The other circuit."""
+        return (self.other,)
 
 
 @dataclass(frozen=True)

@@ -10,16 +10,16 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
-from settled.encodings.delays import Placement, place
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import Expr, support
 from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_file import read, read_circuit
-from settled.models.specification import CircuitSource, Property, Specification
+from settled.models.specification import Property, Specification
 from settled.models.states import Behaviour
 from settled.verify.engines import engines
 from settled.verify.limits import LimitReached, Limits
+from settled.verify.placing import placed
 from settled.verify.properties import Kind, kinds, shapes, standard
 from settled.verify.questions import Answer, Question, Task, undecided
 from settled.verify.replay import replay
@@ -52,6 +52,7 @@ class Session:
         self._memory: dict[str, dict[str, Any]] = {}
         self.properties = chosen(self.specification, self.settings.only)
         check_inputs(self.specification, self.circuit, self.properties)
+        self._questions = questions(self.circuit, self.properties)
 
     def understood(self) -> tuple[tuple[str, str], ...]:
         """The lines of the echo."""
@@ -74,7 +75,7 @@ class Session:
         began = time.perf_counter()
         kind = kinds()[prop.check]
         options = prop.options
-        question = kind.question(self.circuit, options)
+        question = self._questions[prop.name]
         answer = self.ask(self.circuit, question)
         claim, facts = kind.claim(self.circuit, options), dict(answer.facts)
         if answer.verdict == "refuted":
@@ -82,6 +83,7 @@ class Session:
             claim, facts = replay(kind, behaviour, question, answer)
             facts |= {k: v for k, v in answer.facts.items() if k in ("some_run_settles", "vector")}
             facts |= self._compare_winners(kind, question)
+        known = {circuit.name: circuit for circuit in (*question.circuits, self.circuit)}
         return Result(
             name=prop.name,
             check=prop.check,
@@ -90,7 +92,7 @@ class Session:
             method=answer.method,
             seconds=time.perf_counter() - began,
             reason=answer.reason,
-            traces=tuple(trace(self.circuit, run, _named(self.circuit, options)) for run in answer.runs),
+            traces=tuple(trace(c, run, _named(c, options)) for run in answer.runs for c in [known[run.circuit]]),
             vacuous=answer.verdict == "proved" and not answer.exercised,
             ranged=answer.ranged,
             facts=facts,
@@ -120,12 +122,6 @@ class Session:
         return {} if alone.verdict == "undecided" else {"needs_simultaneous": alone.verdict == "proved"}
 
 
-def placed(source: CircuitSource) -> Circuit:
-    """The circuit under the delay model that its source names."""
-    feedback = "auto" if source.feedback is None else source.feedback
-    return place(source.netlist, source.delay, Placement(source.winners, feedback, source.isochronic, source.closed))
-
-
 def load(path: str, text: str | None = None) -> Specification:
     """Read a property file or a netlist; without properties, the standard questions are put in."""
     if text is None and not path.endswith(".toml"):
@@ -153,6 +149,21 @@ def chosen(spec: Specification, only: Sequence[str]) -> tuple[Property, ...]:
             ]
         )
     return tuple(p for p in spec.properties if not only or p.name in only)
+
+
+def questions(circuit: Circuit, properties: Sequence[Property]) -> dict[str, Question]:
+    """The question of each property, by its name. Raises `InputError` with all that cannot be asked."""
+    found: dict[str, Question] = {}
+    problems: list[Problem] = []
+    for prop in properties:
+        try:
+            found[prop.name] = kinds()[prop.check].question(circuit, prop.options)
+        except InputError as error:
+            place = prop.spans.get("to", prop.span)
+            problems += [p if p.span else replace(p, span=place, spot="asked here") for p in error.problems]
+    if problems:
+        raise InputError(problems)
+    return found
 
 
 def check_inputs(spec: Specification, circuit: Circuit, properties: Sequence[Property]) -> None:
