@@ -30,8 +30,18 @@ def _claim(circuit: Circuit, options: Options) -> str:
 
 def _offends(behaviour: Behaviour, _: Flickers, answer: Answer) -> tuple[str, dict[str, Any]]:
     (run,) = answer.runs
+    signal = answer.facts["signal"]
+    hazard, facts = shown_hazard(behaviour, run, signal, answer.facts["offending_step"])
+    before = describe(behaviour.circuit, run.states[facts["before"]])
+    return f"After {facts['change']} from {before} {signal} has {hazard}.", facts
+
+
+def shown_hazard(behaviour: Behaviour, run: Run, signal: str, step: int) -> tuple[str, dict[str, Any]]:
+    """The hazard of a signal that changes for the second time at `step` of a run, in words, and the facts about it.
+
+    Raises `ValueError` when it does not change twice within one response.
+    """
     circuit = behaviour.circuit
-    signal, step = answer.facts["signal"], answer.facts["offending_step"]
     wave = [value(circuit, [circuit.signal(signal)], s)[0] for s in run.states]
     place = _beginning(behaviour, run, wave, step)
     settles = settled(behaviour, run.states[place:])
@@ -43,8 +53,7 @@ def _offends(behaviour: Behaviour, _: Flickers, answer: Answer) -> tuple[str, di
     change = changed_inputs(circuit, run.states[place], run.states[-1])
     sort = " ".join(filter(None, [hazard["class"], hazard["kind"], "hazard"]))
     pulse = ", ".join(f"{signal}{'+' if b else '-'}" for a, b in pairwise(wave[place:]) if a != b)
-    sentence = f"After {change} from {describe(circuit, run.states[place])} {signal} has a {sort}: {pulse}."
-    return sentence, {"hazard": hazard, "change": change, "before": place, "offending_step": step}
+    return f"a {sort}: {pulse}", {"hazard": hazard, "change": change, "before": place, "offending_step": step}
 
 
 def _beginning(behaviour: Behaviour, run: Run, wave: list[int], step: int) -> int:
