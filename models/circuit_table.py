@@ -65,7 +65,7 @@ def circuit(spot: Spot, chain: tuple[Path, ...] = ()) -> CircuitSource | None:
     spot.only(KEYS, "a circuit")
     if spot.has("file"):
         return _from_file(spot, chain)
-    if not spot.has("excitation"):
+    if not spot.has("excitation") and not spot.has("arbiters"):
         spot.missing("excitation", "a circuit", help='give equations in `[circuit.excitation]`, or `file = "..."`')
     _refuse(spot, _FILE_KEYS, "belongs to a netlist file; this circuit is given by equations")
     netlist = equations.netlist(spot, Path(spot.document.file).stem if spot.document.file != "-" else "circuit")

@@ -1,4 +1,4 @@
-"""Excitation equations: the `[circuit]` table of a property file with its `excitation`, `define` and `cells`.
+"""Equations: the `[circuit]` table of a property file with its `excitation`, `define`, `arbiters` and `cells`.
 
 Each line of `excitation` is a gate with a delay of its own, as in the excitation equations of Huffman ("The synthesis
 of sequential switching circuits", 1954; recalled).
@@ -12,10 +12,11 @@ from graphlib import CycleError, TopologicalSorter
 from settled.models.logic import FALSE, Expr, support
 from settled.models.name_scope import Scope, check_new, expression, names_among, new_names
 from settled.models.netlist import Gate, Netlist
+from settled.models.readers import arbiters
 from settled.models.toml_document import Spot, where
 from settled.models.toml_readers import table
 
-KEYS = ("inputs", "outputs", "excitation", "define", "cells")
+KEYS = ("inputs", "outputs", "excitation", "define", "arbiters", "cells")
 """What a circuit given by equations takes and one read from a file does not."""
 
 
@@ -24,27 +25,35 @@ def netlist(circuit: Spot, name: str) -> Netlist | None:
     inputs = circuit.take("inputs", new_names)
     excitation = circuit.take("excitation", table)
     define = circuit.take("define", table)
-    given = {"inputs": inputs, "excitation": excitation, "define": define}
-    complete = circuit.has("excitation") and not any(circuit.has(key) and given[key] is None for key in given)
-    scope = Scope(inputs or (), _keys(excitation), dict.fromkeys(_keys(define))) if complete else None
-    _check_names(circuit, excitation, define)
+    listed = circuit.take("arbiters", arbiters.elements)
+    elements = listed or []
+    given = {"inputs": inputs, "excitation": excitation, "define": define, "arbiters": listed}
+    nodes = _keys(excitation) + arbiters.grant_names(elements)
+    complete = bool(nodes) and not any(circuit.has(key) and given[key] is None for key in given)
+    scope = Scope(inputs or (), nodes, dict.fromkeys(_keys(define))) if complete else None
+    arbiters.check_names(elements, _check_names(circuit, excitation, define))
     if excitation is not None and not excitation.value:
         excitation.problem("bad-value", "`excitation` is empty: a circuit has at least one node", "no line in it")
     gates, defined = _functions(excitation, scope), _functions(define, scope)
+    grants, pairs = arbiters.read(elements, scope)
     outputs = circuit.take("outputs", names_among(scope.signals if scope else None, "signal"))
-    cells = circuit.take("cells", lambda spot: _cells(spot, scope))
+    cells = circuit.take("cells", lambda spot: _cells(spot, scope)) or {}
+    arbiters.check_cells(elements, cells)
     if define is not None:
         _check_cycles(define, defined)
-    if scope is None or excitation is None:
+    if scope is None:
         return None
+    lines = excitation.members() if excitation else ()
     return Netlist(
         name=name,
         inputs=scope.inputs,
-        gates=tuple(Gate(line.name, gates[line.name], line.key_span) for line in excitation.members()),
+        gates=(*(Gate(line.name, gates[line.name], line.key_span) for line in lines), *grants),
         outputs=outputs or (),
         defined=defined,
-        cells=cells or {},
+        cells=cells,
+        notes=tuple(f"mutual-exclusion element {name}: at most one of {a} and {b}" for name, (a, b) in pairs.items()),
         equations=True,
+        arbiters=pairs,
     )
 
 
@@ -58,8 +67,8 @@ def _functions(spot: Spot | None, scope: Scope | None) -> dict[str, Expr]:
     return {line.name: reader(line) or FALSE for line in spot.members()} if spot else {}
 
 
-def _check_names(circuit: Spot, *tables: Spot | None) -> None:
-    """Every name of a line is one that expressions can read, and names one signal only."""
+def _check_names(circuit: Spot, *tables: Spot | None) -> dict[str, Spot]:
+    """Every name of a line is one that expressions can read, and names one signal only; where each name stands."""
     given = circuit.child("inputs") if circuit.has("inputs") else None
     members = list(given.members()) if given and isinstance(given.value, list) else []
     first = {member.value: member for member in members if isinstance(member.value, str)}
@@ -70,6 +79,7 @@ def _check_names(circuit: Spot, *tables: Spot | None) -> None:
             message = f"`{line.name}` names two signals"
             line.problem("duplicate-name", message, "again", at_key=True, note=note)
         first.setdefault(line.name, line)
+    return first
 
 
 def _check_cycles(define: Spot, defined: dict[str, Expr]) -> None:

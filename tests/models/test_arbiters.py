@@ -1,0 +1,144 @@
+"""Mutual-exclusion elements: how they are written beside equations, and what they mean under each delay model."""
+
+from __future__ import annotations
+
+import json
+import tomllib
+from importlib.resources import files
+
+import pytest
+from jsonschema import Draft202012Validator
+
+from settled.encodings.delays import place
+from settled.models.circuit import Circuit
+from settled.models.logic import to_text
+from settled.models.problems import InputError
+from settled.models.property_file import read
+from settled.models.states import successors
+from settled.verify import check
+from settled.verify.properties import shapes
+
+SCHEMA = json.loads(files("settled.models").joinpath("property-file.schema.json").read_text())
+TWO = """
+[circuit]
+inputs = ["r1", "r2"]
+outputs = ["busy"]
+delay = "DELAY"
+[circuit.arbiters]
+ME = { requests = ["r1", "r2"], grants = ["g1", "g2"] }
+[circuit.define]
+busy = "g1 | g2"
+"""
+
+
+def circuit(text: str, delay: str = "gate") -> Circuit:
+    return place(read("two.toml", kinds=shapes(), text=text.replace("DELAY", delay)).circuit.netlist, delay)
+
+
+def codes(text: str) -> list[str]:
+    with pytest.raises(InputError) as error:
+        read("two.toml", kinds=shapes(), text=text)
+    return [problem.code for problem in error.value.problems]
+
+
+def valid(text: str) -> bool:
+    return bool(Draft202012Validator(SCHEMA).is_valid(tomllib.loads(text)))
+
+
+@pytest.mark.parametrize("delay", ["gate", "feedback"])
+def test_each_grant_is_a_node_excited_by_its_request_and_not_the_other_grant(delay: str) -> None:
+    two = circuit(TWO, delay)
+    assert {n: to_text(e) for n, e in two.excitation.items()} == {"g1": "r1 & ~g2", "g2": "r2 & ~g1"}
+    assert two.exclusive == (("g1", "g2"),)
+    assert valid(TWO.replace("DELAY", delay))
+
+
+def test_either_grant_may_come_but_not_both_in_one_step() -> None:
+    two = circuit(TWO)
+    asked = 0b0011
+    assert sorted(successors(two, asked)) == [asked | 1 << two.place["g1"], asked | 1 << two.place["g2"]]
+
+
+def test_under_wire_delays_it_is_a_closed_cell() -> None:
+    assert set(circuit(TWO, "wire").nodes) == {"r1>", "r2>", "r1>ME", "r2>ME", "g1", "g2"}
+
+
+def test_it_withdraws_an_excitation_only_between_its_two_grants() -> None:
+    text = TWO.replace("DELAY", "gate") + """
+[environment]
+mode = "input-output"
+start = { r1 = 0, r2 = 0, g1 = 0, g2 = 0 }
+inputs.r1 = { rises = "~g1", falls = "g1", must = true }
+inputs.r2 = { rises = "~g2", falls = "g2", must = true }
+[[property]]
+check = "speed-independent"
+[[property]]
+check = "speed-independent"
+except = ["g1", "g2"]
+[[property]]
+check = "never"
+expr = "r1 & g1 & r2 & g2"
+[[property]]
+check = "leads-to"
+from = "r1 | r2"
+to = "busy"
+[[property]]
+check = "leads-to"
+from = "r1"
+to = "g1"
+"""
+    whole, excepted, exclusion, some, fair = check("two.toml", text=text).results
+    assert whole.facts["withdrawn"] in (["g1"], ["g2"])
+    assert excepted.verdict == exclusion.verdict == "proved"
+    assert some.verdict == "proved"
+    assert fair.verdict == "refuted" and fair.traces[0].loop is not None, "the other client may win again and again"
+
+
+SOUND = 'arbiters = { M = { requests = ["a", "b"], grants = ["g", "h"] } }'
+BASE = '[circuit]\ninputs = ["a", "b"]\nexcitation = { q = "a" }\n'
+
+
+@pytest.mark.parametrize(
+    ("line", "code"),
+    [
+        ('arbiters = { M = { requests = ["a", "b"], grants = ["g", "h", "i"] } }', "bad-value"),
+        ('arbiters = { M = { requests = ["a"], grants = ["g", "h"] } }', "bad-value"),
+        ('arbiters = { M = { requests = ["a", "c"], grants = ["g", "h"] } }', "unknown-name"),
+        ('arbiters = { M = { requests = ["a", "b"], grants = ["g", "g"] } }', "duplicate-name"),
+        ('arbiters = { M = { requests = ["a", "b"], grants = ["q", "h"] } }', "duplicate-name"),
+        ('arbiters = { M = { requests = ["a", "b"], grants = ["stable", "h"] } }', "reserved-name"),
+        ('arbiters = { M = { requests = ["a", "b"] } }', "missing-key"),
+        ('arbiters = { M = { grants = ["g", "h"] } }', "missing-key"),
+        ('arbiters = { M = { requests = ["a", "b"], grants = ["g", "h"], grant = 1 } }', "unknown-key"),
+        ('arbiters = { M = { requests = ["a", "b"], grants = 1 } }', "wrong-type"),
+        ('arbiters = { M = ["a", "b"] }', "wrong-type"),
+        ("arbiters = {}", "bad-value"),
+        ("arbiters = 1", "wrong-type"),
+        (f'delay = "wire"\n{SOUND}\ncells = {{ c = ["g"] }}', "conflict"),
+        (f'delay = "wire"\n{SOUND}\ncells = {{ M = ["q"] }}', "duplicate-name"),
+    ],
+)  # fmt: skip
+def test_what_cannot_be_read(line: str, code: str) -> None:
+    assert codes(BASE + line) == [code]
+
+
+def test_what_the_schema_can_see_it_refuses() -> None:
+    for line in ('arbiters = { M = { requests = ["a"], grants = ["g", "h"] } }', "arbiters = 1"):
+        assert not valid(BASE + line)
+    assert valid(BASE + SOUND)
+    assert not valid('[circuit]\nfile = "x.v"\n' + SOUND)
+
+
+def test_an_arbiter_may_read_what_another_one_grants() -> None:
+    text = """
+[circuit]
+inputs = ["a", "b", "c"]
+[circuit.arbiters]
+inner = { requests = ["a", "b"], grants = ["ga", "gb"] }
+outer = { requests = ["either", "c"], grants = ["ge", "gc"] }
+[circuit.define]
+either = "ga | gb"
+"""
+    found = circuit(text)
+    assert to_text(found.excitation["ge"]) == "(ga | gb) & ~gc"
+    assert found.nodes == ("ga", "gb", "ge", "gc")
