@@ -1,0 +1,56 @@
+"""Deterministic observers beside a transition system: what has changed how often, and a state that comes again.
+
+They turn questions about runs into questions whether a state can be reached.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from settled.encodings.system import Observer, Restraint, System, system
+from settled.models.circuit import Circuit
+from settled.models.environment import Environment
+from settled.models.logic import FALSE, TRUE, Expr, and_, ite, not_, or_, var, xor
+
+
+def counted(name: str, signal: Expr, reset: Expr, most: int) -> tuple[list[Observer], Expr]:
+    """Observers that count the changes of `signal` since `reset` was last true, up to `most`; and the condition that
+    it has changed more often. `name` tells them from others.
+
+    After i changes the signal has its old value if i is even: a level is passed where its parity does not fit.
+    """
+    before = var(f"{name} before")
+    levels = [TRUE, *(var(f"{name} changed {i}") for i in range(1, most + 1))]
+    passed = [and_(level, xor(signal, before, FALSE if i % 2 == 0 else TRUE)) for i, level in enumerate(levels)]
+    found = [Observer(before.name, signal, ite(reset, signal, before))]
+    for i, level in enumerate(levels[1:]):
+        found.append(Observer(level.name, FALSE, and_(not_(reset), or_(level, passed[i]))))
+    return found, passed[most]
+
+
+SAVED = "saved"
+
+
+def returning(circuit: Circuit, environment: Environment, nodes: Sequence[str]) -> tuple[System, Expr]:
+    """The system in which an unstable state may be saved, whereupon inputs and all nodes but `nodes` are held; and the
+    condition that it came round to the saved state by a fair run of `nodes`.
+
+    Fair: for each of them there was a moment at which it was not excited with its saved value. This is the reduction
+    of liveness to safety (Biere, Artho and Schuppan 2002, recalled).
+    """
+    saved, save = var(SAVED), var("save")
+    excited = {n: circuit.is_excited[n] for n in nodes}
+    saving = and_(save, not_(saved), or_(*excited.values()))
+    inside = set(nodes)
+    held = {s: or_(saved, saving) for s in circuit.signals if s not in inside}
+    made = system(circuit, environment, Restraint(held))
+    observers = [Observer(SAVED, FALSE, or_(saved, saving))]
+    back = [saved]
+    for n in nodes:
+        copy, calm = var(f"{n} {SAVED}"), var(f"{n} was calm")
+        observers.append(Observer(copy.name, FALSE, ite(saving, var(n), copy)))
+        now = not_(excited[n])
+        moved = or_(calm, now, xor(var(n), copy))
+        observers.append(Observer(calm.name, FALSE, ite(saving, now, and_(saved, moved))))
+        back += [not_(xor(var(n), copy)), calm]
+    return made.observed(observers, ["save"]), and_(*back)
