@@ -17,11 +17,11 @@ from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_file import read, read_circuit
 from settled.models.specification import Property, Specification
 from settled.models.states import Behaviour
-from settled.verify.engines import engines
-from settled.verify.limits import LimitReached, Limits
+from settled.verify.engines import decide
+from settled.verify.limits import Limits
 from settled.verify.placing import placed
 from settled.verify.properties import Kind, kinds, shapes, standard
-from settled.verify.questions import Answer, Question, Task, undecided
+from settled.verify.questions import Answer, Question, Task
 from settled.verify.replay import replay
 from settled.verify.result import FileReport, Result, trace
 from settled.verify.understood import understood
@@ -104,16 +104,7 @@ class Session:
         """The first decision that an engine comes to; else why the last one came to none."""
         limits = Limits(self.settings.seconds, self.settings.states, self.settings.report)
         task = Task(circuit, self.specification.environment, limits, self._memory.setdefault(circuit.winners, {}))
-        answer = undecided("no engine answers this kind of question", "none")
-        for engine in engines():
-            if type(question) in engine.answers:
-                try:
-                    answer = engine.answers[type(question)](task, question)
-                except LimitReached as reached:
-                    answer = undecided(str(reached), engine.name)
-                if answer.verdict != "undecided":
-                    break
-        return answer
+        return decide(task, question)
 
     def _compare_winners(self, kind: Kind, question: Question) -> dict[str, bool]:
         if not kind.compares_winners or self.circuit.winners == "one":
