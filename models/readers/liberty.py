@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 from bisect import bisect_right
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from typing import NoReturn
@@ -31,6 +31,7 @@ _TOKEN = re.compile(
     |(?P<other>.))""",
     re.DOTALL | re.VERBOSE,
 )
+_INSIDE = re.compile(r'"[^"\\]*(?:\\.[^"\\]*)*"|/\*.*?\*/|//[^\n]*|[{}]', re.DOTALL)
 _NAME = re.compile(r"[!-~]+")
 _KEPT = {
     *("library", "cell", "pin", "latch", "ff", "bus", "bundle", "statetable"),
@@ -108,7 +109,7 @@ class _Parser:
     def __init__(self, text: str, file: str) -> None:
         self.text = text
         self.file = file
-        self._tokens = _tokens(text)
+        self._place = 0
         self._kind, self._value, self._start = "", "", 0
         self._next()
 
@@ -121,8 +122,7 @@ class _Parser:
                 self._fail("nothing after the library")
             self._statement(stack)
         if len(stack) > 1:
-            inner = stack[-1]
-            self._fail(f"`}}` that closes group `{inner.kind}` of line {self.span(inner.start, 1).line}")
+            self._unclosed(stack[-1].kind, stack[-1].start)
         if not root.groups or root.groups[0].kind != "library":
             message = f"`{self.file}` holds no `library` group"
             raise InputError(Problem("syntax", message, Span(self.file, 1, 1), help="accepted: Liberty text"))
@@ -167,16 +167,32 @@ class _Parser:
             self._next()
         if not self._accept(")"):
             self._fail("`)` after the arguments")
-        if self._accept("{"):
+        if self._at("{") and name not in _KEPT:
+            self._pass_over(name, start)
+        elif self._accept("{"):
             group = _Group(name, arguments, start)
-            if name in _KEPT:
-                stack[-1].groups.append(group)
+            stack[-1].groups.append(group)
             stack.append(group)
         elif name == "include_file":
             message = "`include_file` is not accepted"
             raise InputError(Problem("include", message, self.span(start, len(name)), help="join the files into one"))
         elif not self._accept(";") and self._kind == "sign" and not self._at("}"):
             self._fail("`;` or `{`")
+
+    def _pass_over(self, name: str, start: int) -> None:
+        """Go on after the `}` of a group that does not matter."""
+        depth = 0
+        for token in _INSIDE.finditer(self.text, self._start):
+            depth += {"{": 1, "}": -1}.get(token[0], 0)
+            if depth == 0:
+                self._place = token.end()
+                self._next()
+                return
+        self._kind, self._value, self._start = "end", "", len(self.text)
+        self._unclosed(name, start)
+
+    def _unclosed(self, name: str, start: int) -> NoReturn:
+        self._fail(f"`}}` that closes group `{name}` of line {self.span(start, 1).line}")
 
     def cell(self, group: _Group) -> Cell:
         """A cell from its group."""
@@ -219,7 +235,12 @@ class _Parser:
         return Span(self.file, line + 1, start - self._lines[line] + 1, max(1, min(length, rest)))
 
     def _next(self) -> None:
-        self._kind, self._value, self._start = next(self._tokens)
+        token = _TOKEN.match(self.text, self._place)
+        assert token is not None  # its alternatives take any character
+        self._kind = token.lastgroup or "end"
+        self._value = token[self._kind]
+        self._start = token.start(self._kind) - (self._kind == "string")
+        self._place = token.end()
 
     def _at(self, *signs: str) -> bool:
         return self._kind == "sign" and self._value in signs
@@ -234,14 +255,3 @@ class _Parser:
         found = "the end of the file" if self._kind == "end" else f"`{self._value[:40]}`"
         span = self.span(self._start, len(self._value))
         raise InputError(Problem("syntax", f"expected {expected}, found {found}", span, "here"))
-
-
-def _tokens(text: str) -> Iterator[tuple[str, str, int]]:
-    """Kind, value and place of each token; the end repeats for ever."""
-    for token in _TOKEN.finditer(text):
-        kind = token.lastgroup or "end"
-        yield kind, token[kind], token.start(kind) - (kind == "string")
-        if kind == "end":
-            break
-    while True:
-        yield "end", "", len(text)
