@@ -1,15 +1,56 @@
-"""The `[environment]` table: how the inputs behave."""
+"""The `[environment]` table: how the inputs behave, and the circuit that drives some of them."""
 
 from __future__ import annotations
 
+from collections.abc import Collection
+from dataclasses import replace
+from pathlib import Path
+
+from settled.models import circuit_table
 from settled.models.environment import Environment, Guard
+from settled.models.joining import join
 from settled.models.logic import TRUE
 from settled.models.name_scope import Scope, expression, state, unknown
+from settled.models.problems import InputError
+from settled.models.specification import CircuitSource, Property
 from settled.models.toml_document import Spot
 from settled.models.toml_readers import array_of, boolean, one_of, table
 
-KEYS = ("mode", "changes", "assume", "start", "inputs")
+KEYS = ("mode", "changes", "assume", "start", "inputs", "circuit")
 GUARD_KEYS = ("rises", "falls", "must")
+_NOT_ITS_OWN = ("delay", "feedback", "winners", "isochronic", "closed", "cells")
+
+
+def surrounded(root: Spot, circuit: CircuitSource | None) -> CircuitSource | None:
+    """The circuit with the one that `[environment]` names as its environment; `None` when a noted problem leaves none.
+
+    `root` is the whole property file.
+    """
+    environment = root.value.get("environment")
+    if not isinstance(environment, dict) or "circuit" not in environment:
+        return circuit
+    spot = root.child("environment").child("circuit")
+    other = circuit_table.circuit(spot, (Path(spot.document.file).resolve(),))
+    for key in _NOT_ITS_OWN if isinstance(spot.value, dict) else ():
+        if spot.has(key):
+            message = f"`{key}` is not said of the environment: each of its gates carries one delay"
+            spot.child(key).problem("conflict", message, "not for this circuit", at_key=True)
+    if circuit is None or other is None:
+        return None
+    try:
+        return replace(circuit, netlist=join(circuit.netlist, other.netlist, spot.span))
+    except InputError as error:
+        spot.document.note(*error.problems)
+        return None
+
+
+def check_alone(root: Spot, properties: Collection[Property]) -> None:
+    """Note every property that compares with another circuit, where the environment is a circuit."""
+    environment = root.value.get("environment")
+    if isinstance(environment, dict) and "circuit" in environment:
+        for prop in (p for p in properties if p.check in ("equivalent", "realises")):
+            message = f"`{prop.check}` compares circuits under inputs that are free; here a circuit drives some"
+            root.problem("conflict", message, "not beside `circuit` of the environment", span=prop.span)
 
 
 def read_environment(spot: Spot, scope: Scope | None) -> Environment | None:

@@ -39,6 +39,7 @@ class Netlist:
       the closed cells, one tuple of gate names each, that the name stands for.
     * `cells`: closed cells in force, by name, as the gates they hold. Flip-flops of a cell library come closed.
     * `arbiters`: mutual-exclusion elements by name, as the two gates that are their grants (see `arbiter`).
+    * `delayed`: gates that carry a delay under every delay model, beside the grants of `arbiters`.
     * `notes`: sentences for the echo, such as how a library cell was understood.
     """
 
@@ -52,6 +53,7 @@ class Netlist:
     notes: tuple[str, ...] = ()
     equations: bool = False
     arbiters: Mapping[str, tuple[str, str]] = field(default_factory=dict)
+    delayed: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
         for name in ("defined", "cells", "groups", "arbiters"):

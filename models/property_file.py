@@ -6,7 +6,7 @@ from collections.abc import Mapping
 
 from settled.models import circuit_table
 from settled.models.environment import Environment
-from settled.models.environment_table import read_environment
+from settled.models.environment_table import check_alone, read_environment, surrounded
 from settled.models.name_scope import Scope
 from settled.models.property_table import Context, read_properties
 from settled.models.source import Span
@@ -28,13 +28,14 @@ def read(path: str, *, kinds: Mapping[str, Shape], text: str | None = None) -> S
     root = document.root
     root.only(KEYS, "a property file")
     title = root.take("title", string) or ""
-    circuit = circuit_table.read_table(root)
+    circuit = surrounded(root, circuit_table.read_table(root))
     scope = Scope.of(circuit.netlist) if circuit else None
     environment: Environment | None = Environment()
     if root.has("environment"):
         environment = read_environment(root.child("environment"), scope)
     context = Context(circuit, environment, kinds)
     properties = root.take("property", lambda spot: read_properties(spot, context)) or ()
+    check_alone(root, properties)
     document.finish()
     assert circuit is not None and environment is not None, "what cannot be read leaves a problem"
     return Specification(path, title, circuit, environment, properties, _spans(root))

@@ -1,8 +1,8 @@
 """Delay model `feedback`: only the feedback lines carry a delay, all other gates have none (Huffman 1954, recalled).
 
-The grants of a mutual-exclusion element always carry one. With `"auto"` a smallest set of lines that cuts every loop
-is chosen, as a smallest hitting set of the loops: loops that the set so far leaves whole are added until none is left
-(implicit hitting sets, Moreno-Centeno and Karp 2013, recalled).
+The grants of a mutual-exclusion element and the gates of an environment always carry one. With `"auto"` a smallest
+set of lines that cuts every loop is chosen, as a smallest hitting set of the loops: loops that the set so far leaves
+whole are added until none is left (implicit hitting sets, Moreno-Centeno and Karp 2013, recalled).
 """
 
 from __future__ import annotations
@@ -51,11 +51,11 @@ def place(netlist: Netlist, placement: Placement) -> Circuit:
 def _lines(netlist: Netlist, gates: Mapping[str, Expr], placement: Placement) -> tuple[tuple[str, ...], list[str]]:
     if netlist.equations:
         return tuple(gates), []
-    grants = {grant for pair in netlist.arbiters.values() for grant in pair}
+    kept = {*netlist.delayed, *(grant for pair in netlist.arbiters.values() for grant in pair)}
     if placement.feedback != "auto":
-        return tuple(n for n in gates if n in placement.feedback or n in grants), []
-    cut = smallest_cut({name: body for name, body in gates.items() if name not in grants})
-    chosen = tuple(n for n in gates if n in cut or n in grants)
+        return tuple(n for n in gates if n in placement.feedback or n in kept), []
+    cut = smallest_cut({name: body for name, body in gates.items() if name not in kept})
+    chosen = tuple(n for n in gates if n in cut or n in kept)
     return chosen, [f"feedback lines chosen (a smallest cut of all loops): {', '.join(chosen) or 'none needed'}"]
 
 
