@@ -14,7 +14,9 @@ from itertools import count
 import numpy as np
 
 from settled.encodings.packed import Places, Words
-from settled.verify.explicit.graph import Edges, Graph, Key
+from settled.verify.explicit.edges import Edges
+from settled.verify.explicit.graph import Graph
+from settled.verify.explicit.search import Key
 
 LARGE = 200
 PATIENCE = 20_000

@@ -1,150 +1,20 @@
-"""The graph of reachable total states, explored layer by layer, and what is read off it.
-
-Layers are ordered by (steps in which an input changes, steps): the first vertex found that satisfies a condition
-has a run to it with the fewest input changes and, among those, the fewest steps.
-"""
+"""The graph of reachable total states, explored layer by layer, and what is read off it."""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass, field
+from collections.abc import Callable
 from functools import cached_property
-from heapq import heappop, heappush
-from typing import TypeVar
 
 import numpy as np
 import numpy.typing as npt
 
 from settled.encodings.packed import Bits, Packed, Places, Words
-from settled.models.components import components
+from settled.verify.explicit.edges import Edges, fair_components
+from settled.verify.explicit.search import Key, Moves, Search, blocks, distinct
 from settled.verify.explicit.starts import starts
 from settled.verify.limits import LimitReached, Limits
 
-Key = tuple[int, int]
-T = TypeVar("T", bound=np.generic)
-Moves = Callable[[Words], tuple[Places, Words]]
-
-BLOCK = 1 << 21
-LARGE = 50_000
 NONE, MANY = -1, -2
-
-
-def blocks(vertices: Words, movers: Words, limits: Limits, winners: str = "any") -> Iterator[slice]:
-    """Slices of `vertices` small enough that all steps of a slice fit into memory."""
-    count = np.bitwise_count(movers).astype(np.float64)
-    rows = np.exp2(count) if winners == "any" else count
-    if len(rows) and rows.max() > 4 * BLOCK:
-        limits.refuse(f"{int(count.max())} signals can switch in one step, in more combinations than fit into memory")
-    start, total = 0, np.cumsum(rows)
-    while start < len(rows):
-        base = total[start - 1] if start else 0.0
-        stop = max(start + 1, int(np.searchsorted(total, base + BLOCK, side="right")))
-        yield slice(start, stop)
-        start = stop
-
-
-def distinct(words: npt.NDArray[T]) -> npt.NDArray[T]:
-    """The values in increasing order, each once (several times faster than numpy's `unique` on integers)."""
-    ordered = np.sort(words)
-    first = np.ones(len(ordered), bool)
-    first[1:] = ordered[1:] != ordered[:-1]
-    return ordered[first]
-
-
-class Known:
-    """A growing set of words: a table of flags where that fits, else sorted runs that are merged as they grow."""
-
-    def __init__(self, bits: int) -> None:
-        self._table = np.zeros(1 << bits, bool) if bits <= 24 else None
-        self._runs: list[Words] = []
-
-    def missing(self, words: Words) -> Words:
-        """Those of `words` (sorted, distinct) that are not in the set."""
-        if self._table is not None:
-            return words[~self._table[words.astype(np.int64)]]
-        for run in self._runs:
-            at = np.searchsorted(run, words)
-            at[at == len(run)] = 0
-            words = words[run[at] != words]
-        return words
-
-    def add(self, words: Words) -> None:
-        """Put in words (sorted, distinct) that are missing."""
-        if self._table is not None:
-            self._table[words.astype(np.int64)] = True
-            return
-        self._runs.append(words)
-        while len(self._runs) > 1 and len(self._runs[-1]) * 2 > len(self._runs[-2]):
-            last = self._runs.pop()
-            self._runs[-1] = np.sort(np.concatenate([self._runs[-1], last]))
-
-
-@dataclass
-class Search:
-    """A layered search along `moves`; `flagged` ends it. The bits of `inputs` tell changes from mere steps.
-
-    After `run`, `layers` holds the vertices by key (input changes, steps), least first, and `hit` the least flagged
-    vertex of the first layer that has one, with its key, or None.
-    """
-
-    bits: int
-    inputs: np.uint64
-    moves: Moves
-    limits: Limits
-    flagged: Callable[[Words], Bits] | None = None
-    layers: dict[Key, Words] = field(default_factory=dict)
-    hit: tuple[Key, int] | None = None
-    size: int = 0
-
-    def run(self, sources: dict[Key, Words]) -> Search:
-        """Explore from `sources`, vertices by the key that they have already reached."""
-        known = Known(self.bits)
-        waiting: dict[Key, list[Words]] = {key: [words] for key, words in sources.items()}
-        queue = sorted(waiting)
-        while queue:
-            key = heappop(queue)
-            fresh = known.missing(distinct(np.concatenate(waiting.pop(key))))
-            if not len(fresh):
-                continue
-            known.add(fresh)
-            self.layers[key] = fresh
-            self.size += len(fresh)
-            self.limits.tick(self.size, key[0])
-            if self.flagged is not None and (bad := fresh[self.flagged(fresh)]).size:
-                self.hit = (key, int(bad[0]))
-                return self
-            source, target = self.moves(fresh)
-            changed = self.changed(fresh[source], target)
-            for after, found in (((key[0], key[1] + 1), target[~changed]), ((key[0] + 1, key[1] + 1), target[changed])):
-                if len(found):
-                    if after not in waiting:
-                        heappush(queue, after)
-                    waiting.setdefault(after, []).append(distinct(found))
-        return self
-
-    def changed(self, before: Words, after: Words | np.uint64) -> Bits:
-        """Whether an input changes in each move."""
-        return (before ^ after) & self.inputs != 0
-
-    def path(self, key: Key, target: int) -> list[tuple[Key, int]]:
-        """The vertices from a source to `target` in layer `key`, the least predecessor chosen at each step."""
-        back = [(key, target)]
-        while (found := self._before(*back[-1])) is not None:
-            back.append(found)
-        return back[::-1]
-
-    def _before(self, key: Key, target: int) -> tuple[Key, int] | None:
-        rounds, steps = key
-        for before in ((rounds, steps - 1), (rounds - 1, steps - 1)):
-            layer = self.layers.get(before)
-            if layer is None:
-                continue
-            source, reached = self.moves(layer)
-            origin = layer[source[reached == np.uint64(target)]]
-            origin = origin[self.changed(origin, np.uint64(target)) == (before[0] < rounds)]
-            if len(origin):
-                return before, int(origin.min())
-        return None
 
 
 class Graph:
@@ -158,19 +28,30 @@ class Graph:
     def __init__(self, packed: Packed, limits: Limits, sources: Words | None = None) -> None:
         self.packed, self.limits = packed, limits
         self.search = Search(packed.bits, packed.input_mask, self.moves, limits)
+        self.search.begin({(0, 0): starts(packed, limits) if sources is None else sources})
+        self.explore(limits)
+
+    def explore(self, limits: Limits) -> None:
+        """Go on with a search that was not finished, under new limits."""
+        derived = [n for n in self.__dict__ if isinstance(getattr(type(self), n, None), cached_property)]
+        for name in derived:
+            del self.__dict__[name]
+        self.limits = self.search.limits = limits
         self.unfinished: str | None = None
         try:
-            self.search.run({(0, 0): starts(packed, limits) if sources is None else sources})
+            self.search.run()
         except LimitReached as reached:
             self.unfinished = str(reached)
-        keys = list(self.search.layers)
+        self._sort()
+
+    def _sort(self) -> None:
+        self.keys = list(self.search.layers)
         joined = np.concatenate([*self.search.layers.values(), np.zeros(0, np.uint64)])
         order = np.argsort(joined)
         self.vertices: Words = joined[order]
-        layer = np.repeat(np.arange(len(keys)), [len(w) for w in self.search.layers.values()])[order]
-        self.keys, self.layer = keys, layer
-        self.excited: Words = packed.excited(self.vertices)
-        self.end: Bits = packed.ends(self.vertices, self.excited)
+        self.layer = np.repeat(np.arange(len(self.keys)), [len(w) for w in self.search.layers.values()])[order]
+        self.excited: Words = self.packed.excited(self.vertices)
+        self.end: Bits = self.packed.ends(self.vertices, self.excited)
 
     def __len__(self) -> int:
         return len(self.vertices)
@@ -207,7 +88,9 @@ class Graph:
     def steps(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the response (in input-output mode: every step)."""
         movers = self.packed.excited(vertices)
-        return self._blockwise(lambda v, m: self.packed.steps(v, m), vertices, movers)
+        if not self.packed.fundamental:
+            movers = movers | self.packed.allowed(vertices)
+        return self._blockwise(self.packed.steps, vertices, movers)
 
     def held(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the nodes alone, the inputs held."""
@@ -288,92 +171,3 @@ class Graph:
     def cores(self) -> list[Places]:
         """The sustained oscillations: strongly connected sets that a fair run can go round with the inputs held."""
         return fair_components(self.held_edges, self.vertices, self.excited)
-
-
-class Edges:
-    """Edges between vertices 0 to size - 1, looked up from either side."""
-
-    def __init__(self, size: int, source: Places, target: Places) -> None:
-        self.size = size
-        self.source, self.target = source, target
-
-    @cached_property
-    def _by_target(self) -> tuple[Places, Places]:
-        order = np.argsort(self.target, kind="stable")
-        return self.source[order], np.searchsorted(self.target[order], np.arange(self.size + 1))
-
-    @cached_property
-    def _by_source(self) -> tuple[Places, Places]:
-        order = np.argsort(self.source, kind="stable")
-        return self.target[order], np.searchsorted(self.source[order], np.arange(self.size + 1))
-
-    def into(self, targets: Places) -> tuple[Places, Places]:
-        """All edges into `targets`: (source, target) of each."""
-        other, first = self._by_target
-        place, owner = _ranges(first, targets)
-        return other[place], owner
-
-    def out_of(self, sources: Places) -> tuple[Places, Places]:
-        """All edges out of `sources`: (source, target) of each."""
-        other, first = self._by_source
-        place, owner = _ranges(first, sources)
-        return owner, other[place]
-
-
-def _ranges(first: Places, rows: Places) -> tuple[Places, Places]:
-    """Positions first[r] to first[r + 1] - 1 of every row in one array, and the row that each belongs to."""
-    count = first[rows + 1] - first[rows]
-    skip = np.repeat(np.cumsum(count) - count, count)
-    return np.repeat(first[rows], count) + np.arange(len(skip)) - skip, np.repeat(rows, count)
-
-
-def fair_components(edges: Edges, vertices: Words, excited: Words) -> list[Places]:
-    """The strongly connected sets with an edge inside in which no node is excited with one value throughout."""
-    left = _with_successors(edges)
-    if not len(left):
-        return []
-    place = np.full(edges.size, -1, np.int64)
-    place[left] = np.arange(len(left))
-    source, target = place[edges.source], place[edges.target]
-    inside = (source >= 0) & (target >= 0)
-    label = _components(len(left), source[inside], target[inside])
-    order = np.argsort(label, kind="stable")
-    parts = np.split(left[order], np.flatnonzero(np.diff(label[order])) + 1)
-    found = [part for part in parts if len(part) > 1 and not stuck(vertices[part], excited[part])]
-    return sorted(found, key=lambda part: int(part[0]))
-
-
-def _components(size: int, source: Places, target: Places) -> Places:
-    """A number for each vertex, the same for those that reach one another. scipy costs an import, and wins if large."""
-    if len(source) > LARGE:
-        from scipy.sparse import coo_array
-        from scipy.sparse.csgraph import connected_components
-
-        matrix = coo_array((np.ones(len(source), np.int8), (source, target)), shape=(size, size))
-        return np.asarray(connected_components(matrix, directed=True, connection="strong")[1], np.int64)
-    successors: dict[int, list[int]] = {v: [] for v in range(size)}
-    for v, w in zip(source.tolist(), target.tolist(), strict=True):
-        successors[v].append(w)
-    label = np.zeros(size, np.int64)
-    for number, part in enumerate(components(successors)):
-        label[part] = number
-    return label
-
-
-def stuck(vertices: Words, excited: Words) -> int:
-    """Whether some node is excited with the same value in all of these states (0 if none is)."""
-    high = np.bitwise_and.reduce(excited & vertices)
-    low = np.bitwise_and.reduce(excited & ~vertices)
-    return int(high | low)
-
-
-def _with_successors(edges: Edges) -> Places:
-    """What is left when vertices without successors are taken away again and again."""
-    degree = np.bincount(edges.source, minlength=edges.size)
-    fresh = np.flatnonzero(degree == 0)
-    while len(fresh):
-        before, _ = edges.into(fresh)
-        np.subtract.at(degree, before, 1)
-        touched = distinct(before)
-        fresh = touched[degree[touched] == 0]
-    return np.flatnonzero(degree > 0)

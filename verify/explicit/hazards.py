@@ -10,7 +10,8 @@ import numpy as np
 
 from settled.encodings.packed import Bits, Places, Words
 from settled.models.logic import Program
-from settled.verify.explicit.graph import Graph, Key, Search
+from settled.verify.explicit.graph import Graph
+from settled.verify.explicit.search import Key, Search
 
 ONE = np.uint64(1)
 
@@ -57,7 +58,7 @@ def shortest_flicker(graph: Graph, watch: Watch, bad: int) -> tuple[list[int], s
     """The shortest run (as indices) up to the second change of one of the signals in the packed set `bad`."""
     tagged = Tagged(graph, watch, [i for i in range(len(watch.signals)) if bad >> i & 1])
     moves = Search(tagged.bits, graph.packed.input_mask, tagged.steps, graph.limits, tagged.flagged)
-    search = moves.run(tagged.sources())
+    search = moves.begin(tagged.sources()).run()
     if search.hit is None:
         return None
     path = search.path(*search.hit)

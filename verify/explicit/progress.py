@@ -12,8 +12,10 @@ import numpy as np
 
 from settled.encodings.packed import Packed, Places, Words
 from settled.models.logic import Expr
+from settled.verify.explicit.edges import Edges, fair_components
 from settled.verify.explicit.fair_cycles import nearest_cycle
-from settled.verify.explicit.graph import Edges, Graph, Key, Search, fair_components
+from settled.verify.explicit.graph import Graph
+from settled.verify.explicit.search import Key, Search
 
 Lasso = tuple[list[int], int | None]
 
@@ -68,7 +70,7 @@ class Region:
         self.avoiding = ~graph.packed.holds([target], graph.vertices)
         self.pressing = pressing(graph.packed, graph.vertices, graph.excited)
         packed = graph.packed
-        self.search = Search(packed.bits, packed.input_mask, self._moves, graph.limits).run(self._sources())
+        self.search = Search(packed.bits, packed.input_mask, self._moves, graph.limits).begin(self._sources()).run()
         self.keys = list(self.search.layers)
         self.layer = np.full(len(graph), -1)
         for number, words in enumerate(self.search.layers.values()):

@@ -7,7 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from settled.encodings.packed import Places
-from settled.verify.explicit.graph import MANY, NONE, Edges, Graph
+from settled.verify.explicit.edges import Edges
+from settled.verify.explicit.graph import MANY, NONE, Graph
 
 FAR = np.int64(1) << 40
 

@@ -10,7 +10,8 @@ from collections.abc import Sequence
 import numpy as np
 
 from settled.encodings.packed import Words
-from settled.verify.explicit.graph import Graph, Key
+from settled.verify.explicit.graph import Graph
+from settled.verify.explicit.search import Key
 
 CHUNK = 1 << 14
 
