@@ -44,7 +44,7 @@ _CODES = {
     "PortDoesNotExist": ("unknown-port", ""),
     "InvalidPrimitivePortConn": ("unconnected-pin", "connect every pin of a gate"),
     "InfinitelyRecursiveHierarchy": ("recursion", "a module must not contain itself"),
-    "MaxInstanceDepthExceeded": ("recursion", "instances nest at most 128 levels deep"),
+    "MaxInstanceDepthExceeded": ("recursion", "instances nest at most 100 levels deep"),
     "ParseTreeTooDeep": ("too-deep", "name inner parts as nets of their own"),
 }
 """Diagnostics that have a code of their own here; those among them that are mere warnings count as errors."""
