@@ -5,14 +5,16 @@ from __future__ import annotations
 import math
 import os
 import sys
+from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, NoReturn
 
 import typer
 
 if TYPE_CHECKING:
     from settled.models.problems import Problem
+    from settled.models.specification import Specification
     from settled.verify.result import FileReport, Result
     from settled.verify.session import Session, Settings
     from settled.verify.terminal import Screen
@@ -72,6 +74,12 @@ Only = Annotated[list[str] | None, typer.Option(metavar="NAME", help="Check only
 Seconds = Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Time limit for one property.")]
 States = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")]
 Allow = Annotated[bool, typer.Option("--allow-vacuous", help="Let a vacuous proof count as any other.")]
+_CIRCUIT = "A netlist, or a file with a [circuit] table; `-` and gallery names as for `check`."
+Original = Annotated[str, typer.Argument(metavar="ORIGINAL", show_default=False, help=_CIRCUIT)]
+Other = Annotated[str, typer.Argument(metavar="OTHER", show_default=False, help="The same.")]
+Rules = Annotated[str | None, typer.Option("--environment", metavar="FILE", help="Take the environment of FILE.")]
+Rename = Annotated[list[str] | None, typer.Option(metavar="A=B", help="Call the signal A of OTHER B; repeatable.")]
+Transients = Annotated[bool, typer.Option("--transients", help="Refuse hazards that ORIGINAL does not have, too.")]
 Outputs = Annotated[bool, typer.Option("--outputs", help="Print the values of the outputs behind each entry.")]
 
 
@@ -90,8 +98,7 @@ def check(
     A netlist, and a file without properties, is asked: stable-states, settles, race-free,
     hazard-free on the outputs, essential-hazard-free.
     """
-    from settled.verify.result import exit_status
-    from settled.verify.session import Settings
+    from settled.verify.session import Settings, load
     from settled.verify.terminal import Screen
 
     screen = Screen(silent=json)
@@ -101,13 +108,41 @@ def check(
         if outcome.interrupted:
             outcome.left_out.append(name)
         else:
-            _check_file(name, settings, screen, outcome)
-    written = _deliver(outcome, screen, json, out)
-    if outcome.interrupted:
-        raise typer.Exit(INTERRUPTED)
-    if outcome.broke:
-        raise typer.Exit(INTERNAL)
-    raise typer.Exit(exit_status(outcome.reports, outcome.problems, allow_vacuous) if written else BAD_INPUT)
+            _check_file(name, load, settings, screen, outcome)
+    _finish(outcome, screen, json, out, allow_vacuous)
+
+
+@app.command()
+def equivalent(
+    original: Original,
+    other: Other,
+    environment: Rules = None,
+    rename: Rename = None,
+    transients: Transients = False,
+    json: Json = False,
+    out: Out = None,
+    seconds: Seconds = 60.0,
+    states: States = 4_000_000,
+    allow_vacuous: Allow = False,
+) -> None:
+    """Prove or refute that two circuits agree on the outputs of ORIGINAL.
+
+    Both get the same input changes, under the environment of FILE, else under that of ORIGINAL
+    when it is a property file, else one input at a time from every stable state.
+    """
+    from settled.verify.comparing import comparison
+    from settled.verify.session import Settings
+    from settled.verify.terminal import Screen
+
+    screen = Screen(silent=json)
+    settings = Settings((), seconds, states, screen.progress)
+    outcome = Outcome()
+
+    def load(_path: str, _text: str | None) -> Specification:
+        return comparison(original, other, environment, rename or (), transients)
+
+    _check_file(original, load, settings, screen, outcome)
+    _finish(outcome, screen, json, out, allow_vacuous)
 
 
 @dataclass
@@ -121,11 +156,15 @@ class Outcome:
     interrupted: bool = False
 
 
-def _check_file(name: str, settings: Settings, screen: Screen, outcome: Outcome) -> None:
+Load = Callable[[str, str | None], "Specification"]
+"""From a path, and the text of standard input, to what is to be checked."""
+
+
+def _check_file(name: str, load: Load, settings: Settings, screen: Screen, outcome: Outcome) -> None:
     """Check one file; whatever happens is shown and noted in `outcome`."""
     from settled.models.problems import InputError
     from settled.verify.inputs import locate
-    from settled.verify.session import Session, load
+    from settled.verify.session import Session
 
     session: Session | None = None
     results: list[Result] = []
@@ -172,6 +211,18 @@ def _leave_open(session: Session, results: list[Result], why: str, screen: Scree
         claim = kinds()[prop.check].claim(session.circuit, prop.options)
         results.append(Result(prop.name, prop.check, "undecided", claim, "none", 0.0, reason=why))
         screen.decided(session, results[-1])
+
+
+def _finish(outcome: Outcome, screen: Screen, json: bool, out: Path | None, allow_vacuous: bool) -> NoReturn:
+    """Deliver everything and leave with the exit status."""
+    from settled.verify.result import exit_status
+
+    written = _deliver(outcome, screen, json, out)
+    if outcome.interrupted:
+        raise typer.Exit(INTERRUPTED)
+    if outcome.broke:
+        raise typer.Exit(INTERNAL)
+    raise typer.Exit(exit_status(outcome.reports, outcome.problems, allow_vacuous) if written else BAD_INPUT)
 
 
 def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> bool:

@@ -50,7 +50,7 @@ def check_ports(circuit: Circuit, other: Circuit, outputs: Sequence[str]) -> Non
     notes += [_missing(other.name, "signal", z, theirs) for z in outputs if z not in theirs]
     if notes:
         message = f"`{circuit.name}` and `{other.name}` cannot be compared: their ports differ"
-        help = "both must have the same inputs, and the other one all compared outputs; --rename a=b maps names"
+        help = "both need the same inputs, and the other one all compared outputs; `--rename a=b` calls its signal a b"
         raise InputError(Problem("ports-differ", message, notes=tuple(notes), help=help))
     if not outputs:
         raise InputError(Problem("nothing-to-compare", f"`{circuit.name}` has no outputs to compare", help="list some"))
@@ -96,8 +96,9 @@ def _offends(behaviour: Behaviour, question: Differs, answer: Answer) -> tuple[s
         raise ValueError("the runs do not go through the same changes")
     changes = ways[0]
     starts = f"{describe(behaviour.circuit, left.states[0])} and {describe(question.other, right.states[0])}"
-    after = f"After {_text(behaviour.circuit, left.states[0], changes)} from {starts}" if changes else f"In {starts}"
-    facts["changes"] = _text(behaviour.circuit, left.states[0], changes)
+    text = _text(behaviour.circuit, left.states[0], changes)
+    after = f"After {text} from {starts}:" if changes else f"In the start states {starts}:"
+    facts["changes"] = text
     if left.loop is not None or right.loop is not None:
         return f"{after} {_restless(sides, (left, right))}.", facts
     if "signal" in answer.facts:
