@@ -24,7 +24,7 @@ from settled.verify.properties import Kind, kinds, shapes, standard
 from settled.verify.questions import Answer, Question, Task
 from settled.verify.replay import replay
 from settled.verify.result import FileReport, Result, trace
-from settled.verify.understood import understood
+from settled.verify.understood import beside, understood
 
 WITHOUT_START = ("stable-states", "initialises")
 
@@ -56,7 +56,9 @@ class Session:
 
     def understood(self) -> tuple[tuple[str, str], ...]:
         """The lines of the echo."""
-        return understood(self.specification.circuit, self.circuit, self.specification.environment)
+        others = {c.name: c for question in self._questions.values() for c in question.circuits}
+        lines = understood(self.specification.circuit, self.circuit, self.specification.environment)
+        return lines + tuple(line for circuit in others.values() for line in beside(circuit))
 
     def results(self) -> Iterator[Result]:
         """Decide one property after the other."""

@@ -47,6 +47,15 @@ def understood(source: CircuitSource, circuit: Circuit, environment: Environment
     return tuple(lines)
 
 
+def beside(circuit: Circuit) -> tuple[tuple[str, str], ...]:
+    """Lines of the echo about another circuit that a property compares with."""
+    return (
+        ("compared with", f"{circuit.name}, nodes {_names(circuit.nodes)}"),
+        ("its delays", f"{MODELS[circuit.delay]}; winners: {WINNERS[circuit.winners]}"),
+        *[("its note", note) for note in circuit.notes],
+    )
+
+
 def _names(names: Sequence[str], most: int = 24) -> str:
     if len(names) <= most:
         return ", ".join(names) or "none"
