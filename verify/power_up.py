@@ -70,7 +70,7 @@ def start_facts(circuit: Circuit, environment: Environment, ends: Sequence[int])
     if any(behaviour.may_start(end) for end in ends):
         return {"start_reached": True}
     given = " ".join(f"{s}={int(v)}" for s, v in environment.start.items())
-    found = ", ".join(_values(circuit, environment, end) for end in ends[:4])
+    found = ", ".join(dict.fromkeys(_values(circuit, environment, end) for end in ends[:4]))
     note = f"the start of this file ({given}) is not reached from power-up by this sequence, which ends with {found}"
     return {"start_reached": False, "note": note}
 

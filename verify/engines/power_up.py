@@ -40,8 +40,9 @@ def powers_up(task: Task, question: PowersUp) -> Answer:
 
 
 def _parts(task: Task, question: PowersUp, graph: PowerUp) -> Answer:
-    titles = ("from one power-up state", "from another power-up state, or in another ordering")
     paths = [graph.run_states(graph.path_to(int(end))) for end in graph.ends[:2]]
+    apart = paths[0][0] != paths[1][0]
+    titles = ("from one power-up state", "from another power-up state" if apart else "in another ordering")
     runs = [Run(title, states, None, task.circuit.name) for title, states in zip(titles, paths, strict=True)]
     facts = _facts(task, question, graph)
     return Answer("refuted", NAME, runs=tuple(runs), ranged=_ranged(graph), facts={"ends": len(graph.ends), **facts})

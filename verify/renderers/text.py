@@ -6,6 +6,7 @@ from collections.abc import Iterable, Sequence
 
 from settled.models.circuit import Circuit
 from settled.verify.properties import kinds
+from settled.verify.renderers import power_up_text
 from settled.verify.renderers.page import Page, columns, pad
 from settled.verify.renderers.trace_text import tables
 from settled.verify.result import Result
@@ -73,6 +74,7 @@ def remarks(result: Result, circuit: Circuit) -> list[str]:
         alone = "also when nodes switch one at a time"
         together = "only when two nodes switch at exactly the same moment"
         said.append(together if facts["needs_simultaneous"] else alone)
+    said += power_up_text.remarks(facts)
     if result.certificate:
         entries = result.certificate.items()
         more = ", ".join(counted(n, what.replace("_", " ")) for what, n in entries if isinstance(n, int))
