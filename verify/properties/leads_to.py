@@ -9,7 +9,7 @@ from __future__ import annotations
 from typing import Any
 
 from settled.models.circuit import Circuit
-from settled.models.logic import Expr, to_text
+from settled.models.logic import to_text
 from settled.models.specification import Shape
 from settled.models.states import Behaviour, Run, members, value, walk
 from settled.verify.properties import Kind, Options
@@ -42,12 +42,7 @@ def pressing(behaviour: Behaviour, state: int) -> int:
 def _offends(behaviour: Behaviour, question: Evades, answer: Answer) -> tuple[str, dict[str, Any]]:
     (run,) = answer.runs
     circuit = behaviour.circuit
-    begun = _last_true(behaviour, question.source, run)
-    if begun < 0:
-        raise ValueError("`from` is never true")
-    since = begun if run.loop is None else min(begun, run.loop)
-    if _last_true(behaviour, question.target, run) >= since:
-        raise ValueError("`to` is true afterwards")
+    begun = _begun(behaviour, question, run)
     if run.loop is None:
         _check_end(behaviour, run)
         how = f"the run may end in {describe(circuit, run.states[-1])}"
@@ -59,10 +54,16 @@ def _offends(behaviour: Behaviour, question: Evades, answer: Answer) -> tuple[st
     return sentence, {"from_step": begun, "ends": run.loop is None}
 
 
-def _last_true(behaviour: Behaviour, expression: Expr, run: Run) -> int:
-    """The last position at which the expression is true, -1 if there is none."""
-    true = [i for i, state in enumerate(run.states) if value(behaviour.circuit, [expression], state)[0]]
-    return true[-1] if true else -1
+def _begun(behaviour: Behaviour, question: Evades, run: Run) -> int:
+    """The first position with `from` true since which `to` has been false. Raises `ValueError` if there is none."""
+    both = [value(behaviour.circuit, [question.source, question.target], state) for state in run.states]
+    goal = max((i for i, (_, target) in enumerate(both) if target), default=-1)
+    if run.loop is not None and goal >= run.loop:
+        raise ValueError("`to` is true in the loop")
+    for i, (source, _) in enumerate(both):
+        if source and i > goal:
+            return i
+    raise ValueError("`from` is not true since `to` was true last")
 
 
 def _check_end(behaviour: Behaviour, run: Run) -> None:
