@@ -45,10 +45,11 @@ class Moves:
         return formulas([e], self.now)[0]
 
     def _follow(self) -> Any:
-        """A node that moves takes the value of its excitation."""
+        """A node that moves takes the value of its excitation, and only one of an exclusive pair moves."""
         targets = formulas([self.circuit.excitation[n] for n in self.circuit.nodes], self.now)
         pairs = zip(self.circuit.nodes, targets, strict=True)
-        return z3.And(*(z3.Implies(self.moved[n], self.then[n] == t) for n, t in pairs))
+        apart = [z3.Not(z3.And(self.moved[a], self.moved[b])) for a, b in self.circuit.exclusive]
+        return z3.And(*apart, *(z3.Implies(self.moved[n], self.then[n] == t) for n, t in pairs))
 
     def _still(self, names: Sequence[str]) -> Any:
         return z3.And(*(z3.Not(self.moved[s]) for s in names))

@@ -178,11 +178,20 @@ class _Making:
         bits = [self._select(f"mover bit {i}") for i in range(len(names).bit_length())]
         return {name: _equals(bits, number) for number, name in enumerate(names, 1)}
 
+    def _turns(self) -> dict[str, list[Expr]]:
+        """For the nodes of exclusive pairs, whether it is theirs to move."""
+        found: dict[str, list[Expr]] = {}
+        for i, (one, other) in enumerate(self.circuit.exclusive):
+            turn = self._select(f"turn {i}")
+            found.setdefault(one, []).append(turn)
+            found.setdefault(other, []).append(not_(turn))
+        return found
+
     def _nodes(self, alone: Mapping[str, Expr]) -> dict[str, May]:
-        found = {}
+        found, turns = {}, self._turns()
         for n in self.circuit.nodes:
             now, target = var(n), self.circuit.excitation[n]
-            free = self._free(n)
+            free = and_(self._free(n), *turns.get(n, ()))
             if n in alone:
                 found[n] = forced(ite(and_(alone[n], free), target, now))
             else:
