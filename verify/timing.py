@@ -64,7 +64,7 @@ class Schedule:
     delays: Mapping[Key, int]
 
     def delay(self, node: str, rises: bool) -> tuple[int, ...]:
-        """The delays of one edge of a node, firing by firing, the last one for all that follow; 1 where none is needed."""
+        """The delays of one edge of a node, firing by firing, the last for all that follow; 1 where none is needed."""
         found = [v for k, v in sorted(self.delays.items()) if k[0] == node and k[1:2] in ((), (rises,))]
         while len(found) > 1 and found[-1] == found[-2]:
             found.pop()
@@ -79,14 +79,18 @@ def unroll(trace: Trace, rounds: int) -> tuple[int, ...]:
     return (*indices, *(rounds - 1) * indices[trace.loop :], trace.loop)
 
 
-def schedule(trace: Trace, nodes: Sequence[str]) -> Schedule:
-    """Times and delays for a run: one delay a node if that is possible, else one an edge, else one a firing."""
-    positions = unroll(trace, ROUNDS)
-    spells = list(excitations(trace, positions, nodes))
+def schedule(trace: Trace, nodes: Sequence[str], least: int | None = None) -> Schedule:
+    """Times and delays for a run: one delay a node if that is possible, else one an edge, else one a firing.
+
+    `least`: the step up to which the run matters; rather than more delays, only that much of it is kept.
+    """
+    whole = unroll(trace, ROUNDS)
+    parts = [whole] if least is None or trace.loop is not None else [whole, whole[: least + 1]]
     for kind in KINDS:
-        found = _solve(trace, positions, spells, kind)
-        if found is not None:
-            return Schedule(kind, positions, *found)
+        for positions in parts:
+            found = _solve(trace, positions, list(excitations(trace, positions, nodes)), kind)
+            if found is not None:
+                return Schedule(kind, positions, *found)
     raise AssertionError("a delay for every firing is always possible")
 
 
