@@ -73,6 +73,8 @@ Out = Annotated[Path | None, typer.Option(metavar="DIR", callback=_directory, he
 Only = Annotated[list[str] | None, typer.Option(metavar="NAME", help="Check only the property NAME; repeatable.")]
 Seconds = Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Time limit for one property.")]
 States = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")]
+Memory = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of memory for a process, in megabytes.")]
+Jobs = Annotated[int, typer.Option(metavar="N", min=1, help="How many engines may work side by side.")]
 Allow = Annotated[bool, typer.Option("--allow-vacuous", help="Let a vacuous proof count as any other.")]
 _CIRCUIT = "A netlist, or a file with a [circuit] table; `-` and gallery names as for `check`."
 Original = Annotated[str, typer.Argument(metavar="ORIGINAL", show_default=False, help=_CIRCUIT)]
@@ -91,6 +93,8 @@ def check(
     only: Only = None,
     seconds: Seconds = 60.0,
     states: States = 4_000_000,
+    memory: Memory = 8_000,
+    jobs: Jobs = 2,
     allow_vacuous: Allow = False,
 ) -> None:
     """Check every property of every file.
@@ -102,7 +106,7 @@ def check(
     from settled.verify.terminal import Screen
 
     screen = Screen(silent=json)
-    settings = Settings(tuple(only or ()), seconds, states, screen.progress)
+    settings = Settings(tuple(only or ()), seconds, states, memory, jobs, screen.progress)
     outcome = Outcome()
     for name in files:
         if outcome.interrupted:
@@ -123,6 +127,8 @@ def equivalent(
     out: Out = None,
     seconds: Seconds = 60.0,
     states: States = 4_000_000,
+    memory: Memory = 8_000,
+    jobs: Jobs = 2,
     allow_vacuous: Allow = False,
 ) -> None:
     """Prove or refute that two circuits agree on the outputs of ORIGINAL.
@@ -135,7 +141,7 @@ def equivalent(
     from settled.verify.terminal import Screen
 
     screen = Screen(silent=json)
-    settings = Settings((), seconds, states, screen.progress)
+    settings = Settings((), seconds, states, memory, jobs, screen.progress)
     outcome = Outcome()
 
     def load(_path: str, _text: str | None) -> Specification:

@@ -17,13 +17,13 @@ from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_file import read, read_circuit
 from settled.models.specification import Property, Specification
 from settled.models.states import Behaviour
-from settled.verify.engines import decide
 from settled.verify.limits import Limits
 from settled.verify.placing import placed
 from settled.verify.properties import Kind, kinds, shapes, standard
 from settled.verify.questions import Answer, Question, Task
 from settled.verify.replay import replay
 from settled.verify.result import FileReport, Result, trace
+from settled.verify.side_by_side import decide
 from settled.verify.understood import beside, understood
 
 WITHOUT_START = ("stable-states", "initialises")
@@ -31,11 +31,13 @@ WITHOUT_START = ("stable-states", "initialises")
 
 @dataclass
 class Settings:
-    """What the user asked beside the files: names of properties, limits for one property, a listener."""
+    """What the user asked beside the files: names of properties, limits for one property, processes, a listener."""
 
     only: Sequence[str] = ()
     seconds: float = 60.0
     states: int = 4_000_000
+    megabytes: int = 8_000
+    jobs: int = 2
     report: Callable[[str], None] | None = None
 
 
@@ -104,9 +106,10 @@ class Session:
 
     def ask(self, circuit: Circuit, question: Question) -> Answer:
         """The first decision that an engine comes to; else why the last one came to none."""
-        limits = Limits(self.settings.seconds, self.settings.states, self.settings.report)
+        s = self.settings
+        limits = Limits(s.seconds, s.states, s.megabytes, s.report)
         task = Task(circuit, self.specification.environment, limits, self._memory.setdefault(circuit.winners, {}))
-        return decide(task, question)
+        return decide(task, question, s.jobs)
 
     def _compare_winners(self, kind: Kind, question: Question) -> dict[str, bool]:
         if not kind.compares_winners or self.circuit.winners == "one":

@@ -15,11 +15,15 @@ from settled.verify.questions import Answer, Question, Task, undecided
 
 @dataclass(frozen=True)
 class Engine:
-    """One way of answering. `answers[kind of question]` takes the task and the question; `rank` orders attempts."""
+    """One way of answering. `answers[kind of question]` takes the task and the question; `rank` orders attempts.
+
+    An engine that is `apart` keeps nothing in the task's memory and works in a process of its own beside others.
+    """
 
     name: str
     rank: int
     answers: Mapping[type[Question], Callable[[Task, Any], Answer]]
+    apart: bool = False
 
 
 @cache
@@ -29,15 +33,23 @@ def engines() -> tuple[Engine, ...]:
     return tuple(sorted(found, key=lambda e: (e.rank, e.name)))
 
 
+def able(question: Question) -> list[Engine]:
+    """The engines that answer this kind of question, the first to try first."""
+    return [e for e in engines() if type(question) in e.answers]
+
+
+def attempt(engine: Engine, task: Task, question: Question) -> Answer:
+    """What one engine answers; `undecided` with the limit that it reached."""
+    try:
+        return engine.answers[type(question)](task, question)
+    except LimitReached as reached:
+        return undecided(str(reached), engine.name)
+
+
 def decide(task: Task, question: Question) -> Answer:
-    """The first decision that an engine comes to; else why the last one came to none."""
+    """The first decision that an engine at home comes to; else why the last one came to none."""
     answer = undecided("no engine answers this kind of question", "none")
-    for engine in engines():
-        if type(question) in engine.answers:
-            try:
-                answer = engine.answers[type(question)](task, question)
-            except LimitReached as reached:
-                answer = undecided(str(reached), engine.name)
-            if answer.verdict != "undecided":
-                break
+    for engine in able(question):
+        if not engine.apart and (answer := attempt(engine, task, question)).verdict != "undecided":
+            break
     return answer

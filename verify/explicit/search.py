@@ -32,6 +32,7 @@ def blocks(vertices: Words, movers: Words, limits: Limits, winners: str = "any")
         limits.refuse(f"{int(count.max())} signals can switch in one step, in more combinations than fit into memory")
     start, total = 0, np.cumsum(rows)
     while start < len(rows):
+        limits.check(f"within a layer of {len(vertices):,} total states")
         base = total[start - 1] if start else 0.0
         stop = max(start + 1, int(np.searchsorted(total, base + BLOCK, side="right")))
         yield slice(start, stop)
