@@ -7,6 +7,7 @@
 * `clear` and `preset` go before everything else, in master and slave alike. What happens when both are active is
   what `clear_preset_var1` (for the state) and `clear_preset_var2` (for its complement) say; a cell that has both
   without saying so is not guessed at.
+* `MUTEX` stands in every library: the mutual-exclusion element, see `arbiter`.
 * An output whose function is the state itself is the storing gate; an output with another function of the state is a
   gate of its own, in the same closed cell.
 """
@@ -17,6 +18,7 @@ from collections import Counter
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field
 
+from settled.models import arbiter
 from settled.models.logic import Expr, and_, const, ite, not_, or_, rename, support, var
 from settled.models.netlist import Gate
 from settled.models.problems import InputError, Problem
@@ -28,6 +30,19 @@ _NEEDS = {"latch": ("enable", "data_in"), "ff": ("clocked_on", "next_state")}
 _BEYOND = {"latch": ("enable_also", "data_in_also"), "ff": ("clocked_on_also",)}
 _BOTH = ("clear_preset_var1", "clear_preset_var2")
 _EXPRESSIONS = ("enable", "data_in", "clear", "preset", "clocked_on", "next_state")
+_BUILT_IN = Span("settled", 1, 1)
+MUTEX = Cell(
+    arbiter.NAME,
+    (
+        Pin("r1", "input", None),
+        Pin("r2", "input", None),
+        Pin("g1", "output", Words("r1 & !g2", _BUILT_IN)),
+        Pin("g2", "output", Words("r2 & !g1", _BUILT_IN)),
+    ),
+    (),
+    (),
+    _BUILT_IN,
+)
 _PIN_BEYOND = ("three_state", "state_function", "internal_node", "x_function")
 
 

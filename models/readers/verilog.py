@@ -11,6 +11,8 @@ What is read, and as what:
   in the connection of an input of an instance; that gate is called by the net inside. An assignment of nets or
   constants has no delay and is a definition, unless it is written with a delay: then it is a gate too.
 * An instance of a module that the text does not define is a cell of one of the Liberty libraries, see `library_cells`.
+* `settled_mutex (input r1, r2, output g1, g2)` is known without a definition: the mutual-exclusion element, two gates
+  in one closed cell.
 * `#(...)` of gates and assignments gives bounds in the design's unit of time: minimum and maximum of the rising and of
   the falling output.
 * Modules and instances other than the top are groups that can be closed cells.
@@ -28,7 +30,7 @@ from pathlib import Path
 from settled.models.netlist import Netlist
 from settled.models.problems import InputError, Problem
 from settled.models.readers.liberty import Cell, read_cells
-from settled.models.readers.library_cells import stub, unreadable
+from settled.models.readers.library_cells import MUTEX, stub, unreadable
 from settled.models.readers.verilog_elaborate import elaborate
 from settled.models.readers.verilog_hierarchy import flatten
 from settled.models.readers.verilog_text import PROBLEMS
@@ -59,7 +61,7 @@ def read(path: str, *, top: str | None = None, library: Sequence[str] = ()) -> N
 
 def read_text(text: str, path: str, *, top: str | None = None, cells: Mapping[str, Cell] | None = None) -> Netlist:
     """The netlist of Verilog text; `path` names it in problems, and its suffix says which standard it follows."""
-    cells = cells or {}
+    cells = {MUTEX.name: MUTEX, **(cells or {})}
     stubs = {name: stub(cell) for name, cell in cells.items() if not unreadable(cell)}
     design = elaborate(text, path, top, stubs, legacy=Path(path).suffix.lower() == ".v")
     flat = flatten(design, cells)

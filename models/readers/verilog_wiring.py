@@ -13,6 +13,7 @@ from settled.models.netlist import Delay, Netlist
 from settled.models.problems import InputError, Problem
 from settled.models.readers import library_cells
 from settled.models.readers.liberty import Cell
+from settled.models.readers.library_cells import MUTEX
 from settled.models.readers.verilog_elaborate import Design
 from settled.models.readers.verilog_expressions import Bit, Bits, Expressions
 from settled.models.readers.verilog_gates import MANY_OUTPUTS, check_kind, delay, function
@@ -48,6 +49,7 @@ class Wiring:
         self.ports: dict[ast.Symbol, list[_Port]] = {}
         self.fed: set[str] = set()
         self.cells: dict[str, tuple[str, ...]] = {}
+        self.arbiters: dict[str, tuple[str, str]] = {}
         self.notes: dict[str, None] = {}
         self.unit = ""
         self.problems = [*known, *flat.problems]
@@ -83,6 +85,7 @@ class Wiring:
             cells=self.cells,
             groups=self._groups(),
             notes=tuple(self.notes),
+            arbiters=self.arbiters,
         )
 
     @contextmanager
@@ -182,9 +185,9 @@ class Wiring:
             self._cell(item, self.library[symbol.definition.name], ports)
 
     def _check_named(self, item: Item, symbol: ast.InstanceSymbol) -> None:
-        """The order of the pins in a library says nothing about their order in a netlist."""
+        """The order of the pins in a library says nothing about their order in a netlist; that of an arbiter does."""
         kinds = [getattr(c, "kind", None) for c in getattr(symbol.syntax, "connections", ())]
-        if syntax.SyntaxKind.OrderedPortConnection in kinds:
+        if syntax.SyntaxKind.OrderedPortConnection in kinds and self.library[symbol.definition.name] is not MUTEX:
             message = f"pins of library cell `{symbol.definition.name}` are connected by their order"
             help = "connect them by name, as in `.A(net)`: a library gives its pins no order"
             raise InputError(Problem("ordered-pins", message, self._span(item), "instance", help=help))
@@ -202,6 +205,9 @@ class Wiring:
                 message = f"`{gate.name}` is the name of a net, and of a node inside instance `{item.name}`"
                 raise InputError(Problem("duplicate-name", message, span, help="rename the net"))
             self.nets.gate(gate.name, gate.function, by, item.owner)
+        if cell is MUTEX:
+            self.arbiters[item.name] = (nets["g1"], nets["g2"])
+            made.notes.append(f"mutual-exclusion element {item.name}: at most one of {nets['g1']} and {nets['g2']}")
         if made.closed:
             self.cells[item.name] = tuple(gate.name for gate in made.gates)
         self.notes.update(dict.fromkeys(made.notes))

@@ -9,11 +9,12 @@ from importlib.resources import files
 import pytest
 from jsonschema import Draft202012Validator
 
-from settled.encodings.delays import place
+from settled.encodings.delays import Placement, place
 from settled.models.circuit import Circuit
 from settled.models.logic import to_text
 from settled.models.problems import InputError
 from settled.models.property_file import read
+from settled.models.readers.verilog import read_text
 from settled.models.states import successors
 from settled.verify import check
 from settled.verify.properties import shapes
@@ -142,3 +143,51 @@ either = "ga | gb"
     found = circuit(text)
     assert to_text(found.excitation["ge"]) == "(ga | gb) & ~gc"
     assert found.nodes == ("ga", "gb", "ge", "gc")
+
+
+# ---- in netlists -----------------------------------------------------------------------------------------------------
+
+SHARED = """
+module shared (input a, b, output x, y);
+  wire early;
+  buf (early, a);
+  INSTANCE
+endmodule
+"""
+
+
+def netlist(instance: str, more: str = "") -> Circuit:
+    return place(read_text(SHARED.replace("INSTANCE", instance) + more, "shared.v", top="shared"), "gate")
+
+
+@pytest.mark.parametrize(
+    "instance", ["settled_mutex m (.r1(early), .r2(b), .g1(x), .g2(y));", "settled_mutex m (early, b, x, y);"]
+)
+def test_a_netlist_may_use_it_without_a_definition(instance: str) -> None:
+    found = netlist(instance)
+    assert {n: to_text(e) for n, e in found.excitation.items()} == {"early": "a", "x": "early & ~y", "y": "b & ~x"}
+    assert found.exclusive == (("x", "y"),)
+
+
+def test_a_grant_that_is_connected_to_nothing_is_still_there() -> None:
+    found = netlist("settled_mutex m (.r1(early), .r2(b), .g1(x)); assign y = 1'b0;")
+    assert found.exclusive == (("x", "m.g2"),)
+
+
+def test_in_a_netlist_it_is_a_closed_cell_called_after_its_instance() -> None:
+    text = SHARED.replace("INSTANCE", "settled_mutex m (early, b, x, y);")
+    nodes = place(read_text(text, "shared.v"), "wire").nodes
+    assert {"early>m", "b>m"} < set(nodes) and not {"x>m", "y>m", "x>y", "y>x"} & set(nodes)
+
+
+@pytest.mark.parametrize("feedback", ["auto", ("early",)])
+def test_both_grants_carry_a_delay_when_only_feedback_lines_do(feedback: str | tuple[str, ...]) -> None:
+    text = SHARED.replace("INSTANCE", "settled_mutex m (early, b, x, y);")
+    found = place(read_text(text, "shared.v"), "feedback", Placement(feedback=feedback))
+    assert set(found.nodes) - {"early"} == {"x", "y"}
+
+
+def test_a_module_of_that_name_in_the_file_goes_first() -> None:
+    own = "module settled_mutex (input r1, r2, output g1, g2); and (g1, r1, r2); or (g2, r1, r2); endmodule"
+    found = netlist("settled_mutex m (early, b, x, y);", own)
+    assert found.exclusive == () and to_text(found.excitation["x"]) == "early & b"
