@@ -86,6 +86,12 @@ def trace(circuit: Circuit, run: Run, also: Sequence[str] = ()) -> Trace:
     return Trace(run.title, run.circuit, tuple(steps), run.loop)
 
 
+def circuits(report: FileReport, result: Result) -> dict[str, Circuit]:
+    """The circuits whose runs a result may show, by name."""
+    others = result.question.circuits if result.question is not None else ()
+    return {circuit.name: circuit for circuit in (*others, report.circuit)}
+
+
 def document(reports: Sequence[FileReport], problems: Sequence[Mapping[str, Any]] = ()) -> dict[str, Any]:
     """The result document; `errors` stands in it only when there are some."""
     body: dict[str, Any] = {"settled": version("settled"), "format": FORMAT}
