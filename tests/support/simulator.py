@@ -9,9 +9,8 @@ from pathlib import Path
 
 import pytest
 
-from settled.models.circuit import Circuit
 from settled.verify.renderers.verilog_text import identifier
-from settled.verify.result import Result
+from settled.verify.result import FileReport, Result, circuits
 from settled.verify.timing import Schedule, schedule
 
 needs_simulator = pytest.mark.skipif(shutil.which("iverilog") is None, reason="needs the Debian package iverilog")
@@ -30,20 +29,25 @@ def run_bench(text: str, folder: Path) -> list[str]:
     return ran.stdout.splitlines()
 
 
-def schedules(result: Result, circuit: Circuit) -> list[Schedule]:
+def schedules(report: FileReport, result: Result) -> list[Schedule]:
     """The schedule of each run of a refuted property."""
-    return [schedule(made, circuit.nodes, result.facts.get("offending_step")) for made in result.traces]
+    known, least = circuits(report, result), result.facts.get("offending_step")
+    last = len(result.traces) - 1
+    return [
+        schedule(made, known[made.circuit].nodes, least if i == last else None) for i, made in enumerate(result.traces)
+    ]
 
 
-def complaint(result: Result, circuit: Circuit, printed: list[str]) -> str | None:
+def complaint(report: FileReport, result: Result, printed: list[str]) -> str | None:
     """What is wrong with the simulation of a bench: no FAIL, or other events than those of the runs."""
     if sum(line.startswith("FAIL at ") for line in printed) != 1:
         return f"not exactly one FAIL: {printed}"
-    for number, (made, found) in enumerate(zip(result.traces, schedules(result, circuit), strict=True), 1):
+    for number, (made, found) in enumerate(zip(result.traces, schedules(report, result), strict=True), 1):
         expected = set()
+        signals = circuits(report, result)[made.circuit].signals
         for time, (a, b) in zip(found.times[1:], pairwise(found.positions), strict=True):
             before, after = made.steps[a].state, made.steps[b].state
-            moved = [s for s in circuit.signals if before[s] != after[s]]
+            moved = [s for s in signals if before[s] != after[s]]
             expected |= {f"{time} run_{number} {identifier(s).strip()}{'+' if after[s] else '-'}" for s in moved}
         logged = [line for line in printed if line.split()[1] == f"run_{number}"]
         within = {line for line in logged if int(line.split()[0]) <= found.times[-1]}

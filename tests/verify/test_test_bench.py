@@ -8,14 +8,15 @@ from itertools import accumulate
 from pathlib import Path
 
 import pytest
-from judging import session_of
+from judging import netlist_of, session_of
 from random_circuits import forward, mixed, pieces, random_question
+from random_pairs import random_pair
 from simulator import complaint, needs_simulator, run_bench, schedules
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import and_, not_, or_, var, xor
-from settled.models.specification import Property
+from settled.models.specification import CircuitSource, Property
 from settled.models.states import Run
 from settled.verify import check
 from settled.verify.inputs import gallery
@@ -46,7 +47,7 @@ def test_every_refuted_property_of_the_gallery_fails_in_the_simulator(name: str,
         text = to_verilog(report, result)
         assert (text is not None) == (result.verdict == "refuted"), result.name
         if text is not None:
-            assert complaint(result, report.circuit, run_bench(text, tmp_path)) is None
+            assert complaint(report, result, run_bench(text, tmp_path)) is None
 
 
 @pytest.mark.parametrize("name", ["race-free", "hazard-free", "never"])
@@ -60,8 +61,8 @@ def test_random_gate_level_circuits_fail_in_the_simulator(name: str, tmp_path: P
         if result.verdict == "refuted":
             text = to_verilog(report, result)
             assert text is not None
-            assert complaint(result, report.circuit, run_bench(text, tmp_path)) is None, seed
-            found = [run.kind for run in schedules(result, report.circuit)]
+            assert complaint(report, result, run_bench(text, tmp_path)) is None, seed
+            found = [run.kind for run in schedules(report, result)]
             assert all(NEEDED[kind] in text for kind in found)
             kinds["gate" if set(found) == {"gate"} else "more"] += 1
     assert kinds["gate"] >= 15 and kinds["gate"] >= 0.8 * kinds.total()
@@ -79,9 +80,26 @@ def test_failures_of_other_properties_are_shown_too(name: str, tmp_path: Path) -
         if result.verdict == "refuted" and name != "stable-states":
             assert text is not None or not moves
         if text is not None:
-            assert complaint(result, report.circuit, run_bench(text, tmp_path)) is None, seed
+            assert complaint(report, result, run_bench(text, tmp_path)) is None, seed
             shown += 1
     assert shown >= 4
+
+
+def test_two_circuits_that_differ_are_seen_to_differ(tmp_path: Path) -> None:
+    shown = 0
+    for seed in range(60):
+        pair = random_pair(f"bench {seed}")
+        to = CircuitSource(netlist_of(pair.other), "gate", winners=pair.other.winners)
+        options = {"to": to, "outputs": pair.outputs, "transients": bool(seed % 2)}
+        report = report_of(pair.original, pair.environment, Property("e", "equivalent", options))
+        (result,) = report.results
+        text = to_verilog(report, result)
+        if result.verdict == "refuted":
+            assert text is not None or len(result.traces) == 1
+        if text is not None:
+            assert complaint(report, result, run_bench(text, tmp_path)) is None, seed
+            shown += 1
+    assert shown >= 10
 
 
 def test_a_node_that_sees_a_tie_is_not_disturbed_by_it(tmp_path: Path) -> None:
@@ -94,8 +112,9 @@ def test_a_node_that_sees_a_tie_is_not_disturbed_by_it(tmp_path: Path) -> None:
     made = trace(circuit, Run("a tie", tuple(states), None, "tie"))
     bad = Reaches(and_(var("g"), p, q))
     result = Result("never g", "never", "refuted", "", "", 0.0, traces=(made,), question=bad)
-    text = to_verilog(FileReport("tie.toml", "", circuit, Environment(), (), (result,)), result)
-    assert text is not None and complaint(result, circuit, run_bench(text, tmp_path)) is None
+    report = FileReport("tie.toml", "", circuit, Environment(), (), (result,))
+    text = to_verilog(report, result)
+    assert text is not None and complaint(report, result, run_bench(text, tmp_path)) is None
 
 
 def test_names_of_any_kind_compile(tmp_path: Path) -> None:

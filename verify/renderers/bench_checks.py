@@ -13,6 +13,7 @@ from settled.models.circuit import Circuit
 from settled.models.logic import Expr, and_, to_text
 from settled.verify.questions import (
     Deadlocks,
+    Differs,
     Diverges,
     DivergesAfterThree,
     Evades,
@@ -89,13 +90,18 @@ def quoted(text: str) -> str:
 
 
 def _ends(_: Result, __: Question, runs: Sequence[TimedRun]) -> Check:
+    last, other = (run.trace.steps[-1].state for run in runs[:2])
+    return _apart(runs, [n for n in runs[0].circuit.nodes if last[n] != other[n]])
+
+
+def _apart(runs: Sequence[TimedRun], names: Sequence[str]) -> Check:
+    """At the end of both runs the named signals differ."""
     end = max(run.schedule.times[-1] for run in runs)
-    one, two = runs[:2]
-    last, other = (run.trace.steps[-1].state for run in (one, two))
-    apart = [n for n in one.circuit.nodes if last[n] != other[n]]
-    what = ", ".join(f"{run.instance} ends with {' '.join(f'{shown(n)}=%b' for n in apart)}" for run in (one, two))
-    said = fail(what, *(identifier(n, run.instance) for run in (one, two) for n in apart))
-    return Check(end, [f"if (now == {end} && {one.together(apart)} !== {two.together(apart)})", f"  {said}"])
+    values = [[run.text(run.circuit.signal(n)) for n in names] for run in runs[:2]]
+    what = [f"{run.instance} ends with {' '.join(f'{shown(n)}=%b' for n in names)}" for run in runs[:2]]
+    one, two = ("{" + ", ".join(v) + "}" for v in values)
+    said = fail(", ".join(what), *values[0], *values[1])
+    return Check(end, [f"if (now == {end} && {one} !== {two})", f"  {said}"])
 
 
 def _glitch(result: Result, _: Question, runs: Sequence[TimedRun]) -> Check:
@@ -144,7 +150,7 @@ def _withdrawal(result: Result, _: Question, runs: Sequence[TimedRun]) -> Check:
         excited, value = run.text(run.circuit.is_excited[node]), identifier(node, run.instance)
         declare.append(f"reg due_{number} = 0, was_{number};")
         sample += [
-            f"if (due_{number} && !({excited}) && {value} === was_{number})",
+            f"if (!failed && due_{number} && !({excited}) && {value} === was_{number})",
             f"  {fail(f'{shown(node)} was due to switch, and no longer is')}",
             f"due_{number} = {excited}; was_{number} = {value};",
         ]
@@ -183,6 +189,16 @@ def _no_rest(result: Result, question: Question, runs: Sequence[TimedRun]) -> Ch
     return _round(result, question, runs) if runs[0].trace.loop is not None else None
 
 
+def _difference(result: Result, question: Question, runs: Sequence[TimedRun]) -> Check | None:
+    """Of two circuits: one goes round, one has a hazard of its own, or their outputs differ in the end."""
+    going_round = [run for run in runs if run.trace.loop is not None]
+    if going_round:
+        return _round(result, question, going_round[:1])
+    if "hazard" in result.facts:
+        return _glitch(result, question, runs[1:])
+    return _apart(runs, list(result.facts["difference"])) if len(runs) > 1 else None
+
+
 MAKERS: dict[type[Question], Callable[[Result, Question, Sequence[TimedRun]], Check | None]] = {
     Diverges: _ends,
     DivergesAfterThree: _ends,
@@ -194,4 +210,5 @@ MAKERS: dict[type[Question], Callable[[Result, Question, Sequence[TimedRun]], Ch
     Deadlocks: _dead_end,
     Evades: _evasion,
     PowersUp: _power_up,
+    Differs: _difference,
 }
