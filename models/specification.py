@@ -63,7 +63,10 @@ class Property:
 
 @dataclass(frozen=True)
 class Specification:
-    """A property file. `spans` says where `start` and `assume` stand, if they do."""
+    """A property file.
+
+    `spans` says where `start` and `assume` stand, if they do; `files` holds the SHA-256 of every file that was read.
+    """
 
     path: str
     title: str
@@ -71,3 +74,4 @@ class Specification:
     environment: Environment
     properties: tuple[Property, ...]
     spans: Mapping[str, Span] = field(default_factory=dict)
+    files: Mapping[str, str] = field(default_factory=dict)

@@ -5,10 +5,27 @@ from __future__ import annotations
 import errno
 import os
 import stat
+from collections.abc import Iterator
+from contextlib import contextmanager
+from contextvars import ContextVar
+from hashlib import sha256
 from pathlib import Path
 
 from settled.models.problems import InputError, Problem, nearest
 from settled.models.source import Span, span_at
+
+_record: ContextVar[dict[str, str] | None] = ContextVar("record", default=None)
+
+
+@contextmanager
+def recording() -> Iterator[dict[str, str]]:
+    """While it is open, collects the SHA-256 (hexadecimal) of the content of every file that is read, by path."""
+    found: dict[str, str] = {}
+    token = _record.set(found)
+    try:
+        yield found
+    finally:
+        _record.reset(token)
 
 
 def read_text(path: str | Path, *, limit: int, named_at: Span | None = None) -> str:
@@ -42,6 +59,9 @@ def problem_of(path: Path, named_at: Span) -> Problem | None:
 
 def decode(raw: bytes, file: str) -> str:
     """`raw` as text; an error names the first byte that is not UTF-8, or is NUL, with its place."""
+    record = _record.get()
+    if record is not None:
+        record[file] = sha256(raw).hexdigest()
     try:
         text = raw.decode("utf-8-sig")
     except UnicodeDecodeError as error:

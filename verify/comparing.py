@@ -12,6 +12,7 @@ from settled.models.property_file import read, read_circuit
 from settled.models.renaming import read_names, renamed
 from settled.models.source import Span
 from settled.models.specification import CircuitSource, Property, Specification
+from settled.models.text_file import recording
 from settled.verify.inputs import locate
 from settled.verify.properties import shapes
 
@@ -26,10 +27,10 @@ def comparison(
     The environment is that of the file `environment`, else that of `original` when it is a property file. `names`
     renames signals of `other`, each `old=new`. Raises `InputError`.
     """
-    source = circuit_of(original)
-    to = circuit_of(other)
+    with recording() as files:
+        source, to = circuit_of(original), circuit_of(other)
+        rules = rules_of(environment or original)
     to = renamed(to, read_names(names, to))
-    rules = rules_of(environment) if environment is not None else rules_of(original)
     problems = list(_unknown_names(rules, source.netlist, environment or original))
     if rules.mode != "fundamental":
         message = "`equivalent` is a property of fundamental mode; this environment is in input-output mode"
@@ -38,7 +39,7 @@ def comparison(
         raise InputError(problems)
     options = {"to": to} | ({"transients": True} if transients else {})
     title = f"{source.netlist.name} against {to.netlist.name} ({other})"
-    return Specification(locate(original)[0], title, source, rules, (Property(NAME, NAME, options),))
+    return Specification(locate(original)[0], title, source, rules, (Property(NAME, NAME, options),), files=files)
 
 
 def circuit_of(name: str) -> CircuitSource:

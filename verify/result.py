@@ -57,7 +57,10 @@ class Result:
 
 @dataclass(frozen=True)
 class FileReport:
-    """Everything about one file: what was understood of it, and a result for each property."""
+    """Everything about one file: what was understood of it, and a result for each property.
+
+    `inputs` holds the SHA-256 (hexadecimal) of every file that was read, by its path.
+    """
 
     file: str
     title: str
@@ -65,6 +68,7 @@ class FileReport:
     environment: Environment
     understood: tuple[tuple[str, str], ...]
     results: tuple[Result, ...]
+    inputs: Mapping[str, str] = field(default_factory=dict)
 
 
 def trace(circuit: Circuit, run: Run, also: Sequence[str] = ()) -> Trace:

@@ -8,6 +8,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from hashlib import sha256
 from typing import Any
 
 from settled.models.circuit import Circuit
@@ -17,6 +18,7 @@ from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_file import read, read_circuit
 from settled.models.specification import Property, Specification
 from settled.models.states import Behaviour
+from settled.models.text_file import recording
 from settled.verify.limits import Limits
 from settled.verify.placing import placed
 from settled.verify.properties import Kind, kinds, shapes, standard
@@ -72,7 +74,8 @@ class Session:
     def report(self, results: Sequence[Result]) -> FileReport:
         """All about the file."""
         spec = self.specification
-        return FileReport(spec.path, spec.title, self.circuit, spec.environment, self.understood(), tuple(results))
+        echo = self.understood()
+        return FileReport(spec.path, spec.title, self.circuit, spec.environment, echo, tuple(results), spec.files)
 
     def decide(self, prop: Property) -> Result:
         """The verdict on one property, its evidence checked. Raises `ReplayFailed` when the evidence fails."""
@@ -120,17 +123,24 @@ class Session:
 
 def load(path: str, text: str | None = None) -> Specification:
     """Read a property file or a netlist; without properties, the standard questions are put in."""
-    if text is None and not path.endswith(".toml"):
-        source = read_circuit(path)
-        spec = Specification(path, source.netlist.name, source, Environment(), ())
-    else:
-        spec = read(path, kinds=shapes(), text=text)
+    with recording() as files:
+        spec = _read(path, text)
+    if text is not None:
+        files[path] = sha256(text.encode()).hexdigest()
+    spec = replace(spec, files=files)
     if spec.properties:
         return spec
     asked = [k for k in standard() if spec.environment.mode in ("fundamental", k.shape.mode) or k.shape.mode == "any"]
     if not spec.circuit.netlist.outputs:
         asked = [k for k in asked if not k.shape.watches]
     return replace(spec, properties=tuple(Property(k.name, k.name, {}) for k in asked))
+
+
+def _read(path: str, text: str | None) -> Specification:
+    if text is None and not path.endswith(".toml"):
+        source = read_circuit(path)
+        return Specification(path, source.netlist.name, source, Environment(), ())
+    return read(path, kinds=shapes(), text=text)
 
 
 def chosen(spec: Specification, only: Sequence[str]) -> tuple[Property, ...]:
