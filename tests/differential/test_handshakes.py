@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections import Counter
 
+import oracle
 import oracle_traces
 import pytest
 from judging import complaints, session_of
@@ -15,6 +16,7 @@ from random_circuits import random_question
 from settled.models.specification import Property
 from settled.verify.explicit import fair_cycles
 from settled.verify.result import document
+from settled.verify.session import Settings
 
 CHECKS = ("speed-independent", "deadlock-free", "leads-to")
 CASES = 250
@@ -56,3 +58,16 @@ def test_many_lassos_are_shown_and_all_are_fair(patience: int, monkeypatch: pyte
             assert oracle_traces.offending(*case[:2], "leads-to", case.options, [trace]) is None, seed
             shown["end" if trace["loop"] is None else "loop"] += 1
     assert min(shown["loop"], shown["end"]) > 20, shown
+
+
+@pytest.mark.parametrize("check", [*CHECKS, "settles"])
+def test_a_search_that_was_cut_short_proves_nothing_and_refutes_nothing_that_holds(check: str) -> None:
+    verdicts: Counter[str] = Counter()
+    for seed in range(100):
+        case = random_question(f"short {seed}", check, winners="one")
+        session = session_of(*case[:2], (Property("cut", check, case.options),), Settings(states=12))
+        (result,) = session.results()
+        verdicts[result.verdict] += 1
+        if result.verdict != "undecided":
+            assert result.verdict == oracle.decide(*case[:2], check, case.options).verdict, seed
+    assert min(verdicts["undecided"], verdicts["refuted"]) > 5, verdicts

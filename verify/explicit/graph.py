@@ -131,7 +131,7 @@ class Graph:
     def _edges(self, moves: Moves) -> Edges:
         sources, targets = [np.zeros(0, np.int64)], [np.zeros(0, np.int64)]
         for start in range(0, len(self.vertices), 1 << 16):
-            self.limits.tick(len(self), self.keys[-1][0])
+            self.limits.check(f"among the moves of {len(self):,} total states")
             source, target = moves(self.vertices[start : start + (1 << 16)])
             place = self.index(target)
             sources.append(source[place >= 0] + start)

@@ -6,6 +6,7 @@ outstanding. A fair run goes round a strongly connected set for ever when nothin
 
 from __future__ import annotations
 
+from dataclasses import replace
 from functools import cached_property
 
 import numpy as np
@@ -70,7 +71,8 @@ class Region:
         self.avoiding = ~graph.packed.holds([target], graph.vertices)
         self.pressing = pressing(graph.packed, graph.vertices, graph.excited)
         packed = graph.packed
-        self.search = Search(packed.bits, packed.input_mask, self._moves, graph.limits).begin(self._sources()).run()
+        limits = replace(graph.limits, states=len(graph))
+        self.search = Search(packed.bits, packed.input_mask, self._moves, limits).begin(self._sources()).run()
         self.keys = list(self.search.layers)
         self.layer = np.full(len(graph), -1)
         for number, words in enumerate(self.search.layers.values()):

@@ -41,7 +41,7 @@ def _in_layer(graph: Graph, layer: Words, key: Key, counted: np.uint64) -> tuple
     found = []
     for start in range(0, len(layer), CHUNK):
         part = layer[start : start + CHUNK]
-        graph.limits.tick(len(graph), key[0])
+        graph.limits.check(f"among {len(graph):,} total states")
         source, target = graph.steps(part)
         before = part[source]
         lost = graph.packed.excited(before) & ~(before ^ target) & ~graph.packed.excited(target) & counted
