@@ -13,7 +13,7 @@ from typing import Any
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
-from settled.models.logic import Expr, support
+from settled.models.logic import Expr, support, topological
 from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_file import read, read_circuit
 from settled.models.specification import Property, Specification
@@ -163,6 +163,7 @@ def questions(circuit: Circuit, properties: Sequence[Property]) -> dict[str, Que
     problems: list[Problem] = []
     for prop in properties:
         try:
+            check_nodes(circuit, prop)
             found[prop.name] = kinds()[prop.check].question(circuit, prop.options)
         except InputError as error:
             place = prop.spans.get("to", prop.span)
@@ -170,6 +171,20 @@ def questions(circuit: Circuit, properties: Sequence[Property]) -> dict[str, Que
     if problems:
         raise InputError(problems)
     return found
+
+
+def check_nodes(circuit: Circuit, prop: Property) -> None:
+    """Raise `InputError` where a property speaks of the excitation of a signal that has no delay of its own."""
+    problems = []
+    for option, value in prop.options.items():
+        leaves = topological([value]) if isinstance(value, Expr) else ()
+        named = [e.name for e in leaves if e.op == "excited"] + (list(value) if option == "except" else [])
+        for name in named:
+            if name not in circuit.excitation:
+                message = f"`{name}` carries no delay under `{circuit.delay}`, so it is never excited"
+                problems.append(Problem("no-node", message, prop.spans.get(option), help=nearest(name, circuit.nodes)))
+    if problems:
+        raise InputError(problems)
 
 
 def check_inputs(spec: Specification, circuit: Circuit, properties: Sequence[Property]) -> None:
