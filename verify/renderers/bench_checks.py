@@ -66,10 +66,17 @@ class Check:
     declare: list[str] = field(default_factory=list)
 
 
-def check(result: Result, runs: Sequence[TimedRun]) -> Check | None:
-    """The check that fits the question of a refuted property; None where a simulation shows nothing."""
-    maker = MAKERS.get(type(result.question)) if result.question is not None else None
-    return maker(result, result.question, runs) if maker is not None and result.question is not None else None
+def shows(result: Result) -> bool:
+    """Whether a simulation can show the failure: there is one, it moves or parts, and its question is known."""
+    if isinstance(result.question, StableCount):
+        return any(trace.loop is not None for trace in result.traces)
+    return type(result.question) in MAKERS and len(result.traces) > isinstance(result.question, Differs)
+
+
+def check(result: Result, runs: Sequence[TimedRun]) -> Check:
+    """The check that fits the question of a refuted property for which `shows` is true."""
+    assert result.question is not None
+    return MAKERS[type(result.question)](result, result.question, runs)
 
 
 def fail(what: str, *arguments: str) -> str:
@@ -185,27 +192,23 @@ def _power_up(result: Result, question: Question, runs: Sequence[TimedRun]) -> C
     return (_round if len(runs) == 1 else _ends)(result, question, runs)
 
 
-def _no_rest(result: Result, question: Question, runs: Sequence[TimedRun]) -> Check | None:
-    return _round(result, question, runs) if runs[0].trace.loop is not None else None
-
-
-def _difference(result: Result, question: Question, runs: Sequence[TimedRun]) -> Check | None:
+def _difference(result: Result, question: Question, runs: Sequence[TimedRun]) -> Check:
     """Of two circuits: one goes round, one has a hazard of its own, or their outputs differ in the end."""
     going_round = [run for run in runs if run.trace.loop is not None]
     if going_round:
         return _round(result, question, going_round[:1])
     if "hazard" in result.facts:
         return _glitch(result, question, runs[1:])
-    return _apart(runs, list(result.facts["difference"])) if len(runs) > 1 else None
+    return _apart(runs, list(result.facts["difference"]))
 
 
-MAKERS: dict[type[Question], Callable[[Result, Question, Sequence[TimedRun]], Check | None]] = {
+MAKERS: dict[type[Question], Callable[[Result, Question, Sequence[TimedRun]], Check]] = {
     Diverges: _ends,
     DivergesAfterThree: _ends,
     Flickers: _glitch,
     Reaches: _bad,
     Oscillates: _round,
-    StableCount: _no_rest,
+    StableCount: _round,
     Withdraws: _withdrawal,
     Deadlocks: _dead_end,
     Evades: _evasion,

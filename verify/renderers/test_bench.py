@@ -13,7 +13,7 @@ from itertools import pairwise
 from typing import Any
 
 from settled.models.logic import support
-from settled.verify.renderers.bench_checks import MAKERS, Check, TimedRun, check, shown
+from settled.verify.renderers.bench_checks import Check, TimedRun, check, shown, shows
 from settled.verify.renderers.file_names import stems
 from settled.verify.renderers.verilog_text import comment, expression, fresh, identifier
 from settled.verify.result import FileReport, Result, Trace, circuits
@@ -29,7 +29,7 @@ NEEDED = {
 def to_verilog(report: FileReport, result: Result) -> str | None:
     """The bench for a refuted property, or None where a simulation shows nothing."""
     known = circuits(report, result)
-    if type(result.question) not in MAKERS or not result.traces or any(t.circuit not in known for t in result.traces):
+    if not shows(result):
         return None
     runs = []
     for i, trace in enumerate(result.traces, 1):
@@ -37,8 +37,6 @@ def to_verilog(report: FileReport, result: Result) -> str | None:
         least = result.facts.get("offending_step") if trace is result.traces[-1] else None
         runs.append(TimedRun(f"run_{i}", circuit, trace, schedule(trace, circuit.nodes, least)))
     found = check(result, runs)
-    if found is None:
-        return None
     start = 10 * (1 + max(max(run.schedule.delays.values(), default=0) for run in runs) // 10)
     modules = [line for i, run in enumerate(runs, 1) for line in [*_module(run, i, start), ""]]
     return "\n".join([*_head(report, result, runs), *modules, *_bench(runs, found, start), "`end_keywords", ""])
