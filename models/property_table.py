@@ -10,6 +10,7 @@ from typing import Any
 
 from settled.models import circuit_table
 from settled.models.environment import Environment
+from settled.models.flow_table_option import flow_table
 from settled.models.logic import Expr, evaluate, to_text
 from settled.models.name_scope import Scope, expression, names_among, state
 from settled.models.problems import nearest
@@ -94,6 +95,7 @@ OPTIONS: Mapping[str, OptionReader] = {
     "at-least": lambda spot, context: whole_number(spot),
     "at-most": lambda spot, context: whole_number(spot),
     "sequence": _sequence,
+    "table": lambda spot, context: flow_table(spot),
     "transients": lambda spot, context: boolean(spot),
     "to of equivalent": _circuit,
 }

@@ -82,6 +82,8 @@ Other = Annotated[str, typer.Argument(metavar="OTHER", show_default=False, help=
 Rules = Annotated[str | None, typer.Option("--environment", metavar="FILE", help="Take the environment of FILE.")]
 Rename = Annotated[list[str] | None, typer.Option(metavar="A=B", help="Call the signal A of OTHER B; repeatable.")]
 Transients = Annotated[bool, typer.Option("--transients", help="Refuse hazards that ORIGINAL does not have, too.")]
+_FLOW = "Print the reduced flow table of what is reachable, as `realises` reads it."
+Flow = Annotated[bool, typer.Option("--flow", help=_FLOW)]
 Outputs = Annotated[bool, typer.Option("--outputs", help="Print the values of the outputs behind each entry.")]
 
 
@@ -253,15 +255,18 @@ def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> 
 
 
 @app.command()
-def table(file: File, outputs: Outputs = False) -> None:
+def table(file: File, outputs: Outputs = False, flow: Flow = False) -> None:
     """Print the transition table of a small circuit.
 
     Input vectors (of at most 4 inputs) run across in Gray order, internal states (of at most
     6 nodes) down; each entry is the next internal state, a stable one in parentheses.
     """
     from settled.models.problems import InputError
+    from settled.verify.flow_table import flow_table
     from settled.verify.inputs import locate
+    from settled.verify.limits import Limits
     from settled.verify.placing import placed
+    from settled.verify.renderers import flow_table_text
     from settled.verify.renderers.table import render
     from settled.verify.session import check_inputs, load
     from settled.verify.terminal import Screen, page
@@ -273,8 +278,11 @@ def table(file: File, outputs: Outputs = False) -> None:
         spec = load(path, text)
         circuit = placed(spec.circuit)
         check_inputs(spec, circuit, ())
-        found = transition_table(circuit, spec.environment)
-        screen.say(render(found, spec.path, spec.title, page(), outputs=outputs))
+        if flow:
+            screen.say(flow_table_text.render(flow_table(circuit, spec.environment, Limits())).rstrip())
+        else:
+            found = transition_table(circuit, spec.environment)
+            screen.say(render(found, spec.path, spec.title, page(), outputs=outputs))
     except InputError as error:
         screen.refused(error.problems, {file: text})
         raise typer.Exit(BAD_INPUT) from None

@@ -12,6 +12,7 @@ from typing import Any
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
+from settled.models.flow_table import FlowTable
 from settled.models.logic import Expr
 from settled.models.states import Run
 from settled.verify.limits import Limits
@@ -118,6 +119,22 @@ class Differs(Question):
     def circuits(self) -> tuple[Circuit, ...]:
         """The other circuit."""
         return (self.other,)
+
+
+@dataclass(frozen=True)
+class Departs(Question):
+    """Can the circuit come to differ from a flow table that gets the same changes, on `outputs`, or not settle?
+
+    As `Differs`, with the table as the original and the circuit as the other one. The table has the circuit's inputs.
+    """
+
+    table: FlowTable
+    outputs: tuple[str, ...]
+
+    @property
+    def circuits(self) -> tuple[Circuit, ...]:
+        """The table as a circuit."""
+        return (self.table.circuit,)
 
 
 @dataclass(frozen=True)

@@ -13,6 +13,7 @@ MODELS = {
     "feedback": "feedback (only the feedback lines carry a delay, all other gates none)",
     "gate": "gate (every gate output carries a delay; wires have none: a promise of the layout)",
     "wire": "wire (every gate output and every connection carries a delay)",
+    "table": "none (a flow table settles in one step)",
 }
 CHANGES = {
     "single": "one input changes at a time, in stable total states only",
@@ -49,9 +50,10 @@ def understood(source: CircuitSource, circuit: Circuit, environment: Environment
 
 def beside(circuit: Circuit) -> tuple[tuple[str, str], ...]:
     """Lines of the echo about another circuit that a property compares with."""
+    winners = "" if circuit.delay == "table" else f"; winners: {WINNERS[circuit.winners]}"
     return (
-        ("compared with", f"{circuit.name}, nodes {_names(circuit.nodes)}"),
-        ("its delays", f"{MODELS[circuit.delay]}; winners: {WINNERS[circuit.winners]}"),
+        ("compared with", f"{circuit.name}: {_names(circuit.nodes)}"),
+        ("its delays", f"{MODELS[circuit.delay]}{winners}"),
         *[("its note", note) for note in circuit.notes],
     )
 
