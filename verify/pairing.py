@@ -10,7 +10,7 @@ from itertools import permutations
 from settled.models.environment import Environment
 from settled.models.states import Behaviour, Situation, choices, members, value
 from settled.verify.limits import Limits
-from settled.verify.questions import Differs
+from settled.verify.questions import Departs, Differs
 
 Schedule = tuple[int, ...]
 """A change of the environment: the packed sets of inputs that change, one set an instant."""
@@ -27,6 +27,20 @@ def environment_of_other(environment: Environment, question: Differs) -> Environ
 def both_need_partners(environment: Environment, question: Differs) -> bool:
     """Whether each start state of the other circuit must have a partner too: `start` speaks of both circuits alike."""
     return len(environment_of_other(environment, question).start) == len(environment.start)
+
+
+def environments_with_table(environment: Environment, question: Departs) -> tuple[Environment, Environment]:
+    """What holds for a flow table, the original, and for the circuit that is to realise it.
+
+    Values of `start` that the table cannot have are the circuit's affair.
+    """
+    shared = {s: v for s, v in environment.start.items() if s in question.table.inputs or s in question.outputs}
+    return replace(environment, start=shared), replace(environment, guards={})
+
+
+def table_needs_partners(environment: Environment, question: Departs) -> bool:
+    """Whether each start state of the table must have a partner: `start` speaks of both sides alike."""
+    return len(environments_with_table(environment, question)[0].start) == len(environment.start)
 
 
 def schedules(

@@ -10,15 +10,18 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple, Protocol
 
+from settled.models.circuit import Circuit
 from settled.verify.explicit.replies import Replies, Reply
 from settled.verify.limits import Limits
-from settled.verify.pairing import Schedule
+from settled.verify.pairing import Schedule, by_vector
 
 Pair = tuple[int, int]
 
 
-class Original(Protocol):
-    """The side that the environment looks at. A stable total state is a number with the input vector lowest."""
+class Facing(Protocol):
+    """One side: its responses. A stable total state is a number with the input vector lowest."""
+
+    circuit: Circuit
 
     def prepare(self, changes: Iterable[tuple[int, Schedule]]) -> None:
         """Make replies to changes ready."""
@@ -35,6 +38,16 @@ class Original(Protocol):
     def value(self, state: int) -> int:
         """The packed values of the compared outputs."""
 
+    def run_to(self, state: int, schedule: Schedule, end: int) -> list[int]:
+        """The shortest run of a response to one of its ends, the state before the change first."""
+
+    def lasso(self, state: int, schedule: Schedule) -> tuple[list[int], int]:
+        """The shortest run of a response that never settles, and the position at which its last state goes on."""
+
+
+class Original(Facing, Protocol):
+    """The side that the environment looks at."""
+
     def care(self, state: int) -> int:
         """The packed set of compared outputs whose value matters."""
 
@@ -48,6 +61,14 @@ class Row(NamedTuple):
     side: int
     state: int
     pairs: tuple[Pair, ...]
+
+
+def rows(lefts: Sequence[int], rights: Sequence[int], mask: int, needs: tuple[bool, bool], limits: Limits) -> list[Row]:
+    """The start states of the sides that need partners, each with its pairs: those under the same input vector."""
+    left, right = by_vector(lefts, mask), by_vector(rights, mask)
+    limits.tick(sum(len(states) * len(right.get(v, ())) for v, states in left.items()), 0)
+    found = [Row(0, a, tuple((a, b) for b in right.get(a & mask, ()))) for a in lefts if needs[0]]
+    return found + [Row(1, b, tuple((a, b) for a in left.get(b & mask, ()))) for b in rights if needs[1]]
 
 
 class Fault(NamedTuple):
