@@ -83,6 +83,7 @@ Rules = Annotated[str | None, typer.Option("--environment", metavar="FILE", help
 Rename = Annotated[list[str] | None, typer.Option(metavar="A=B", help="Call the signal A of OTHER B; repeatable.")]
 Transients = Annotated[bool, typer.Option("--transients", help="Refuse hazards that ORIGINAL does not have, too.")]
 _FLOW = "Print the reduced flow table of what is reachable, as `realises` reads it."
+Equations = Annotated[bool, typer.Option("--equations", help="Print excitations as minimal sums of products instead.")]
 Flow = Annotated[bool, typer.Option("--flow", help=_FLOW)]
 Outputs = Annotated[bool, typer.Option("--outputs", help="Print the values of the outputs behind each entry.")]
 
@@ -255,7 +256,7 @@ def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> 
 
 
 @app.command()
-def table(file: File, outputs: Outputs = False, flow: Flow = False) -> None:
+def table(file: File, outputs: Outputs = False, flow: Flow = False, equations: Equations = False) -> None:
     """Print the transition table of a small circuit.
 
     Input vectors (of at most 4 inputs) run across in Gray order, internal states (of at most
@@ -267,6 +268,7 @@ def table(file: File, outputs: Outputs = False, flow: Flow = False) -> None:
     from settled.verify.limits import Limits
     from settled.verify.placing import placed
     from settled.verify.renderers import flow_table_text
+    from settled.verify.renderers.equations import render as as_equations
     from settled.verify.renderers.table import render
     from settled.verify.session import check_inputs, load
     from settled.verify.terminal import Screen, page
@@ -278,7 +280,9 @@ def table(file: File, outputs: Outputs = False, flow: Flow = False) -> None:
         spec = load(path, text)
         circuit = placed(spec.circuit)
         check_inputs(spec, circuit, ())
-        if flow:
+        if equations:
+            screen.say(as_equations(circuit, spec.path, spec.title, page()))
+        elif flow:
             screen.say(flow_table_text.render(flow_table(circuit, spec.environment, Limits())).rstrip())
         else:
             found = transition_table(circuit, spec.environment)
