@@ -11,6 +11,7 @@ from settled.models.problems import InputError, Problem, nearest
 from settled.models.specification import Shape
 from settled.models.states import Behaviour, Run, walk
 from settled.verify.comparisons import History, circuit_side, judge
+from settled.verify.covers import lost
 from settled.verify.pairing import both_need_partners, environment_of_other, flickers_one_by_one
 from settled.verify.placing import placed
 from settled.verify.properties import Kind, Options
@@ -87,7 +88,12 @@ def _new_hazard(
         raise ValueError("the hazard is not one of the last response")
     if flickers_one_by_one(behaviour, before[0], changes[-1], signal):
         raise ValueError("the original has the same hazard")
-    return f"{signal} of {facing.circuit.name} has {hazard}; {behaviour.circuit.name} has no hazard there", facts
+    sentence = f"{signal} of {facing.circuit.name} has {hazard}; {behaviour.circuit.name} has no hazard there"
+    ends = [[state, run.states[-1]] for state, run in zip(before, answer.runs, strict=True)]
+    cover = lost(((behaviour.circuit, ends[0]), (facing.circuit, ends[1])), signal)
+    if facts["hazard"]["class"] != "static-1" or cover is None:
+        return sentence, facts
+    return f"{sentence}, for its term {cover} covers the change", {**facts, "lost_cover": cover}
 
 
 KIND = Kind(
