@@ -161,6 +161,41 @@ class Behaviour:
                 for bit, rest in self.arrivals(Situation(at.state, chosen)):
                     yield Situation(at.state ^ bit, rest)
 
+    def moves_to(self, at: Situation, state: int) -> set[Situation]:
+        """The situations with this total state that one step reaches: those of `moves`, the others not listed."""
+        if self.environment.mode != "input-output":
+            return self.responses_to(at, state) | self.changes_to(at, state)
+        movers = self.excited(at.state) | self.allowed(at.state)
+        lawful = self._lawful(at.state ^ state, movers) and self.admits(state & self.circuit.input_mask)
+        return {Situation(state)} if lawful else set()
+
+    def responses_to(self, at: Situation, state: int) -> set[Situation]:
+        """Those of `responses` with this total state."""
+        arrived = (at.state ^ state) & self.circuit.input_mask
+        switched = at.state ^ state ^ arrived
+        alone = not switched or self._lawful(switched, self.excited(at.state))
+        if not alone or (switched and arrived and self.circuit.winners == "one"):
+            return set()
+        if not arrived:
+            return {Situation(state, at.outstanding)} if switched else set()
+        return {Situation(state, rest) for bit, rest in self.arrivals(at) if bit == arrived}
+
+    def changes_to(self, at: Situation, state: int) -> set[Situation]:
+        """Those of `changes` with this total state."""
+        moved = at.state ^ state
+        one = moved.bit_count() == 1
+        if not moved or moved & ~self.allowed(at.state) or not (one or self.environment.changes == "simultaneous"):
+            return set()
+        if self.environment.changes == "burst":
+            return {after for after in self.changes(at) if after.state == state}
+        begins = self.environment.mode == "fundamental" and not at.outstanding and self.is_stable(at.state)
+        return {Situation(state)} if begins and self.admits(state & self.circuit.input_mask) else set()
+
+    def _lawful(self, switched: int, movers: int) -> bool:
+        """Whether these, all at once, may be the switchings of one step when `movers` may switch."""
+        some = switched and not switched & ~movers and all(switched & pair != pair for pair in self.circuit.pairs)
+        return bool(some) and (self.circuit.winners == "any" or switched.bit_count() == 1)
+
     def held(self, at: Situation) -> Iterator[Situation]:
         """Steps of the nodes alone."""
         for switching in switchings(self.circuit, self.excited(at.state)):
@@ -203,12 +238,10 @@ def walk(behaviour: Behaviour, run: Run, anywhere: bool = False) -> list[set[Sit
     now = {Situation(first)}
     seen = [now]
     for i, state in enumerate(run.states[1:], 1):
-        now = {after for at in now for after in behaviour.moves(at) if after.state == state}
+        now = {after for at in now for after in behaviour.moves_to(at, state)}
         if not now:
             raise ValueError(f"no lawful move leads to step {i} of the run")
         seen.append(now)
-    if run.loop is not None and not any(
-        after.state == run.states[run.loop] for at in now for after in behaviour.moves(at)
-    ):
+    if run.loop is not None and not any(behaviour.moves_to(at, run.states[run.loop]) for at in now):
         raise ValueError("no lawful move closes the loop of the run")
     return seen

@@ -121,8 +121,8 @@ def histories(behaviour: Behaviour, run: Run) -> set[tuple[History, int]]:
         after: set[tuple[History, Situation]] = set()
         for past, at in now:
             grown = (*past[:-1], (*past[-1], moved)) if moved and past else past
-            after |= {(grown, s) for s in behaviour.responses(at) if s.state == state}
-            after |= {((*past, (moved,)), s) for s in behaviour.changes(at) if s.state == state}
+            after |= {(grown, s) for s in behaviour.responses_to(at, state)}
+            after |= {((*past, (moved,)), s) for s in behaviour.changes_to(at, state)}
         now = after
     return {(past, at.outstanding) for past, at in now}
 

@@ -13,9 +13,9 @@ def response(behaviour: Behaviour, states: Sequence[int]) -> set[Situation]:
     """Where `states` can end if they are one input change or burst in the first and the response to it; else empty."""
     if len(states) < 2:
         return set()
-    now = {after for after in behaviour.changes(Situation(states[0])) if after.state == states[1]}
+    now = behaviour.changes_to(Situation(states[0]), states[1])
     for state in states[2:]:
-        now = {after for at in now for after in behaviour.responses(at) if after.state == state}
+        now = {after for at in now for after in behaviour.responses_to(at, state)}
     return now
 
 
@@ -74,6 +74,6 @@ def rounds(behaviour: Behaviour, run: Run) -> list[list[tuple[int, Situation]]]:
         here = todo.pop()
         if here not in after:
             place = following[here[0]]
-            after[here] = [(place, at) for at in behaviour.moves(here[1]) if at.state == run.states[place]]
+            after[here] = [(place, at) for at in behaviour.moves_to(here[1], run.states[place])]
             todo += after[here]
     return [part for part in components(after) if len(part) > 1 or part[0] in after[part[0]]]

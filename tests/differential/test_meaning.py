@@ -34,6 +34,22 @@ def test_numpy_moves_are_the_executable_moves(mode: str) -> None:
             assert found.get(i, set()) == expected, (seed, word)
 
 
+@pytest.mark.parametrize("mode", ["fundamental", "input-output"])
+def test_a_move_to_a_given_state_is_one_of_all_moves(mode: str) -> None:
+    for seed in range(50):
+        circuit, environment = random_case(f"moves to {seed}", mode=mode, nodes=4)
+        behaviour = Behaviour(circuit, environment)
+        todo = [Situation(s) for s in range(1 << len(circuit.signals)) if behaviour.may_start(s)]
+        seen = set(todo)
+        while todo:
+            at = todo.pop()
+            moves = set(behaviour.moves(at))
+            for state in range(1 << len(circuit.signals)):
+                assert behaviour.moves_to(at, state) == {s for s in moves if s.state == state}, (seed, at, state)
+            todo += moves - seen
+            seen |= moves
+
+
 def test_numpy_starts_are_the_executable_starts() -> None:
     for seed in range(200):
         circuit, environment = random_case(f"starts {seed}")
