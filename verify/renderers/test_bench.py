@@ -44,8 +44,9 @@ def to_verilog(report: FileReport, result: Result) -> str | None:
 
 def _head(report: FileReport, result: Result, runs: Sequence[TimedRun]) -> list[str]:
     circuit = report.circuit
+    name = result.name if result.name == result.check else f"{result.name} ({result.check})"
     lines = [
-        comment(f"Test bench for the refuted property {result.name} ({result.check}) of {report.file}"),
+        comment(f"Test bench for the refuted property {name} of {report.file}"),
         comment(result.claim),
         comment(f"Circuit {circuit.name} under {circuit.delay} delays. Prints FAIL when it shows the failure."),
         comment("Time units mean nothing by themselves: the delays only put the events in their order."),
@@ -114,8 +115,9 @@ def _node(run: TimedRun, node: str, own: _Own) -> Iterator[str]:
         delay = f"({names[0]}, {names[1]})"
         yield f"  integer {names[0]}, {names[1]};"
         for name, delays, edge in zip(names, (rise, fall), ("posedge", "negedge"), strict=True):
-            later = " ".join(f"@({edge} {identifier(node)}) {name} = {d};" for d in delays[1:])
-            yield f"  initial begin {name} = {delays[0]}; @(negedge {own('hold')}); {later} end"
+            later = [f"@({edge} {identifier(node)}) {name} = {d};" for d in delays[1:]]
+            wait = [f"@(negedge {own('hold')});"] if later else []
+            yield f"  initial begin {' '.join([f'{name} = {delays[0]};', *wait, *later])} end"
     value = expression(function)
     if _reads_a_tie(run, node):
         name, reads = own(f"{node}_next"), ", ".join(map(identifier, support(function)))
