@@ -7,7 +7,7 @@ is the number of whole units since the start state was let go.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from settled.models.circuit import Circuit
 from settled.models.logic import Expr, and_, to_text
@@ -59,7 +59,7 @@ class TimedRun:
 
 @dataclass(frozen=True)
 class Check:
-    """`end`: when the simulation ends; `declare`: variables; `sample`: statements, made at every sample."""
+    """`end`: up to when samples are taken; `declare`: variables; `sample`: statements, made at every sample."""
 
     end: int
     sample: list[str]
@@ -76,7 +76,8 @@ def shows(result: Result) -> bool:
 def check(result: Result, runs: Sequence[TimedRun]) -> Check:
     """The check that fits the question of a refuted property for which `shows` is true."""
     assert result.question is not None
-    return MAKERS[type(result.question)](result, result.question, runs)
+    found = MAKERS[type(result.question)](result, result.question, runs)
+    return replace(found, end=max(found.end, *(run.schedule.times[-1] for run in runs)))
 
 
 def fail(what: str, *arguments: str) -> str:

@@ -124,7 +124,6 @@ def _node(run: TimedRun, node: str, own: _Own) -> Iterator[str]:
         yield f"  function {name}; input {reads}; {name} = {value}; endfunction"
         value = f"{name}({reads})"
     started = run.trace.steps[0].state[node]
-    value = f"({value})" if function.op == "ite" and "(" not in value[:1] else value
     yield f"  assign #{delay} {identifier(node)} = {own('hold')} ? 1'b{started} : {value};"
 
 
