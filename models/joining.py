@@ -12,8 +12,8 @@ from settled.models.circuit import definition_order
 from settled.models.logic import Expr, rename, var
 from settled.models.netlist import Netlist
 from settled.models.problems import InputError, Problem
+from settled.models.property_files.toml_document import listed
 from settled.models.source import Span
-from settled.models.toml_document import listed
 
 PREFIX = "env"
 

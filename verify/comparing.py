@@ -8,7 +8,7 @@ from settled.models.environment import Environment
 from settled.models.logic import support
 from settled.models.netlist import Netlist
 from settled.models.problems import InputError, Problem, nearest
-from settled.models.property_file import read, read_circuit
+from settled.models.property_files.reader import read, read_circuit
 from settled.models.renaming import read_names, renamed
 from settled.models.source import Span
 from settled.models.specification import CircuitSource, Property, Specification

@@ -7,9 +7,9 @@ import sys
 from importlib.resources import files
 
 from settled.models.problems import InputError, Problem, nearest
+from settled.models.property_files.toml_loading import SIZE_LIMIT
 from settled.models.source import Span
 from settled.models.text_file import decode, read_text
-from settled.models.toml_loading import SIZE_LIMIT
 
 STDIN = "-"
 

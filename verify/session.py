@@ -15,7 +15,7 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import Expr, support, topological
 from settled.models.problems import InputError, Problem, nearest
-from settled.models.property_file import read, read_circuit
+from settled.models.property_files.reader import read, read_circuit
 from settled.models.specification import Property, Specification
 from settled.models.states import Behaviour
 from settled.models.text_file import recording

@@ -11,10 +11,10 @@ from collections.abc import Iterator, Mapping
 
 from settled.models.arbiter import grants
 from settled.models.logic import var
-from settled.models.name_scope import Scope, check_new, names_among
 from settled.models.netlist import Gate
-from settled.models.toml_document import Spot, where
-from settled.models.toml_readers import table
+from settled.models.property_files.name_scope import Scope, check_new, names_among
+from settled.models.property_files.toml_document import Spot, where
+from settled.models.property_files.toml_readers import table
 
 KEYS = ("requests", "grants")
 

@@ -10,11 +10,11 @@ from collections.abc import Mapping
 from graphlib import CycleError, TopologicalSorter
 
 from settled.models.logic import FALSE, Expr, support
-from settled.models.name_scope import Scope, check_new, expression, names_among, new_names
 from settled.models.netlist import Gate, Netlist
+from settled.models.property_files.name_scope import Scope, check_new, expression, names_among, new_names
+from settled.models.property_files.toml_document import Spot, where
+from settled.models.property_files.toml_readers import table
 from settled.models.readers import arbiters
-from settled.models.toml_document import Spot, where
-from settled.models.toml_readers import table
 
 KEYS = ("inputs", "outputs", "excitation", "define", "arbiters", "cells")
 """What a circuit given by equations takes and one read from a file does not."""

@@ -7,7 +7,7 @@ import re
 import pytest
 
 from settled.models.problems import InputError, Problem
-from settled.models.property_file import read
+from settled.models.property_files.reader import read
 from settled.models.source import Span
 from settled.models.specification import Shape
 from settled.verify.renderers.problems import WIDTH, as_json, render

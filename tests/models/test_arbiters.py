@@ -13,13 +13,13 @@ from settled.encodings.delays import Placement, place
 from settled.models.circuit import Circuit
 from settled.models.logic import to_text
 from settled.models.problems import InputError
-from settled.models.property_file import read
+from settled.models.property_files.reader import read
 from settled.models.readers.verilog import read_text
 from settled.models.states import successors
 from settled.verify import check
 from settled.verify.properties import shapes
 
-SCHEMA = json.loads(files("settled.models").joinpath("property-file.schema.json").read_text())
+SCHEMA = json.loads(files("settled.models.property_files").joinpath("property-file.schema.json").read_text())
 TWO = """
 [circuit]
 inputs = ["r1", "r2"]

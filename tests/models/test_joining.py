@@ -17,14 +17,14 @@ from settled.models.joining import join
 from settled.models.logic import to_text, var
 from settled.models.netlist import Gate, Netlist
 from settled.models.problems import InputError
-from settled.models.property_file import read
+from settled.models.property_files.reader import read
 from settled.verify import check
 from settled.verify.explicit.graph import Graph
 from settled.verify.limits import Limits
 from settled.verify.properties import shapes
 from settled.verify.session import placed
 
-SCHEMA = json.loads(files("settled.models").joinpath("property-file.schema.json").read_text())
+SCHEMA = json.loads(files("settled.models.property_files").joinpath("property-file.schema.json").read_text())
 STAGES = """
 [circuit]
 inputs = ["req", "taken"]

@@ -12,16 +12,16 @@ from pathlib import Path
 import pytest
 from jsonschema import Draft202012Validator
 
-from settled.models import circuit_table, environment_table, property_file
 from settled.models.environment import Environment, Guard
 from settled.models.logic import STABLE, TRUE, and_, excited, not_, or_, to_text, var
 from settled.models.problems import InputError, Problem
-from settled.models.property_file import read, read_circuit
-from settled.models.property_table import OPTIONS
+from settled.models.property_files import circuit_table, environment_table, reader
+from settled.models.property_files.property_table import OPTIONS
+from settled.models.property_files.reader import read, read_circuit
+from settled.models.property_files.toml_document import PROBLEM_LIMIT
+from settled.models.property_files.toml_loading import SIZE_LIMIT
 from settled.models.source import Span
 from settled.models.specification import CircuitSource, Shape, Specification
-from settled.models.toml_document import PROBLEM_LIMIT
-from settled.models.toml_loading import SIZE_LIMIT
 
 KINDS = {
     "stable-states": Shape(optional={"at-least", "at-most"}),
@@ -34,7 +34,7 @@ KINDS = {
     "initialises": Shape(required={"sequence"}),
     "equivalent": Shape(required={"to"}, optional={"outputs", "transients"}, mode="fundamental"),
 }
-SCHEMA = json.loads(files("settled.models").joinpath("property-file.schema.json").read_text())
+SCHEMA = json.loads(files("settled.models.property_files").joinpath("property-file.schema.json").read_text())
 
 WAKE = """\
 title = "Wake latch of the river gauge"
@@ -546,7 +546,7 @@ def valid(text: str) -> bool:
 def test_the_schema_knows_the_same_keys() -> None:
     Draft202012Validator.check_schema(SCHEMA)
     defs = SCHEMA["$defs"]
-    assert set(SCHEMA["properties"]) == set(property_file.KEYS)
+    assert set(SCHEMA["properties"]) == set(reader.KEYS)
     assert set(defs["circuit"]["properties"]) == set(circuit_table.KEYS)
     assert set(defs["environment"]["properties"]) == set(environment_table.KEYS)
     assert set(defs["guard"]["properties"]) == set(environment_table.GUARD_KEYS)

@@ -11,7 +11,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from settled.models.toml_positions import LEVELS, Path, scan, string_offsets
+from settled.models.property_files.toml_positions import LEVELS, Path, scan, string_offsets
 
 EXAMPLE = """\
 # a comment with "quotes" and [brackets]

@@ -97,7 +97,7 @@ def test_neither_the_reader_nor_the_schema_takes_other_tables(table: str) -> Non
     text = ASKED.replace('{ file = "latch.csv" }', table)
     with pytest.raises(InputError):
         check("case.toml", text=text)
-    schema = json.loads(files("settled.models").joinpath("property-file.schema.json").read_text())
+    schema = json.loads(files("settled.models.property_files").joinpath("property-file.schema.json").read_text())
     assert not Draft202012Validator(schema).is_valid(tomllib.loads(text))
     assert Draft202012Validator(schema).is_valid(tomllib.loads(ASKED))
 

@@ -6,9 +6,9 @@ import re
 import tomllib
 
 from settled.models.problems import InputError, Problem
+from settled.models.property_files.toml_document import Document, where
+from settled.models.property_files.toml_positions import LEVELS, Place
 from settled.models.source import Span
-from settled.models.toml_document import Document, where
-from settled.models.toml_positions import LEVELS, Place
 
 SIZE_LIMIT = 2 * 10**6
 """Bytes of a property file that are read; a larger circuit belongs in a netlist file."""

@@ -10,8 +10,8 @@ from itertools import accumulate
 from typing import Any, TypeVar
 
 from settled.models.problems import InputError, Problem, nearest
+from settled.models.property_files.toml_positions import Path, Place, Positions, scan, string_offsets
 from settled.models.source import Span
-from settled.models.toml_positions import Path, Place, Positions, scan, string_offsets
 
 T = TypeVar("T")
 

@@ -6,15 +6,15 @@ from collections.abc import Collection
 from dataclasses import replace
 from pathlib import Path
 
-from settled.models import circuit_table
 from settled.models.environment import Environment, Guard
 from settled.models.joining import join
 from settled.models.logic import TRUE
-from settled.models.name_scope import Scope, expression, state, unknown
 from settled.models.problems import InputError
+from settled.models.property_files import circuit_table
+from settled.models.property_files.name_scope import Scope, expression, state, unknown
+from settled.models.property_files.toml_document import Spot
+from settled.models.property_files.toml_readers import array_of, boolean, one_of, table
 from settled.models.specification import CircuitSource, Property
-from settled.models.toml_document import Spot
-from settled.models.toml_readers import array_of, boolean, one_of, table
 
 KEYS = ("mode", "changes", "assume", "start", "inputs", "circuit")
 GUARD_KEYS = ("rises", "falls", "must")

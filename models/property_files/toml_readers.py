@@ -10,7 +10,7 @@ from collections.abc import Callable, Mapping
 from typing import TypeVar
 
 from settled.models.problems import nearest
-from settled.models.toml_document import Spot, listed, where
+from settled.models.property_files.toml_document import Spot, listed, where
 
 T = TypeVar("T")
 

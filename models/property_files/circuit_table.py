@@ -10,17 +10,17 @@ from pathlib import Path
 from typing import Literal, TypeVar
 
 from settled.models import readers
-from settled.models.name_scope import Scope, names_among
 from settled.models.netlist import Netlist
 from settled.models.problems import InputError, Problem
+from settled.models.property_files.name_scope import Scope, names_among
+from settled.models.property_files.toml_document import Spot, listed
+from settled.models.property_files.toml_loading import SIZE_LIMIT, load
+from settled.models.property_files.toml_readers import one_of, strings, table, text
 from settled.models.readers import equations
 from settled.models.readers.equations import find_cycle
 from settled.models.source import Span
 from settled.models.specification import CircuitSource
 from settled.models.text_file import problem_of, read_text
-from settled.models.toml_document import Spot, listed
-from settled.models.toml_loading import SIZE_LIMIT, load
-from settled.models.toml_readers import one_of, strings, table, text
 
 T = TypeVar("T")
 

@@ -6,9 +6,9 @@ from pathlib import Path
 
 from settled.models.flow_table import FlowTable
 from settled.models.problems import InputError
+from settled.models.property_files.toml_document import Spot
+from settled.models.property_files.toml_readers import table, text
 from settled.models.readers.flow_table import parse, read
-from settled.models.toml_document import Spot
-from settled.models.toml_readers import table, text
 
 
 def flow_table(spot: Spot) -> FlowTable | None:

@@ -4,17 +4,17 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
-from settled.models import circuit_table
 from settled.models.environment import Environment
-from settled.models.environment_table import check_alone, read_environment, surrounded
-from settled.models.name_scope import Scope
-from settled.models.property_table import Context, read_properties
+from settled.models.property_files import circuit_table
+from settled.models.property_files.environment_table import check_alone, read_environment, surrounded
+from settled.models.property_files.name_scope import Scope
+from settled.models.property_files.property_table import Context, read_properties
+from settled.models.property_files.toml_document import Spot
+from settled.models.property_files.toml_loading import SIZE_LIMIT, load
+from settled.models.property_files.toml_readers import string
 from settled.models.source import Span
 from settled.models.specification import CircuitSource, Shape, Specification
 from settled.models.text_file import read_text
-from settled.models.toml_document import Spot
-from settled.models.toml_loading import SIZE_LIMIT, load
-from settled.models.toml_readers import string
 
 KEYS = ("title", "circuit", "environment", "property")
 

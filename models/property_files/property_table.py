@@ -8,15 +8,15 @@ from functools import cached_property
 from itertools import count
 from typing import Any
 
-from settled.models import circuit_table
 from settled.models.environment import Environment
-from settled.models.flow_table_option import flow_table
 from settled.models.logic import Expr, evaluate, to_text
-from settled.models.name_scope import Scope, expression, names_among, state
 from settled.models.problems import nearest
+from settled.models.property_files import circuit_table
+from settled.models.property_files.flow_table_option import flow_table
+from settled.models.property_files.name_scope import Scope, expression, names_among, state
+from settled.models.property_files.toml_document import Spot, listed, where
+from settled.models.property_files.toml_readers import array_of, boolean, one_of, table, text, whole_number
 from settled.models.specification import CircuitSource, Property, Shape
-from settled.models.toml_document import Spot, listed, where
-from settled.models.toml_readers import array_of, boolean, one_of, table, text, whole_number
 
 
 @dataclass(frozen=True)

@@ -11,9 +11,9 @@ from settled.models.expression_text import NameAt, parse
 from settled.models.logic import Expr, excited, substitute
 from settled.models.netlist import Netlist
 from settled.models.problems import InputError, Problem, nearest
+from settled.models.property_files.toml_document import Spot, listed
+from settled.models.property_files.toml_readers import bit, strings, table
 from settled.models.source import Span
-from settled.models.toml_document import Spot, listed
-from settled.models.toml_readers import bit, strings, table
 
 NEAREST_LIMIT = 2_000
 """Among more names than this no near one is looked for."""

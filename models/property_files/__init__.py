@@ -1,0 +1,1 @@
+"""Reading property files: from TOML text to a `Specification`, every problem reported at its place."""
