@@ -16,7 +16,7 @@ from settled.models.circuit import Circuit
 from settled.models.logic import and_, not_, or_, var
 from settled.models.specification import Property
 from settled.models.states import Run, excited, members
-from settled.verify import check
+from settled.verify import check, timing
 from settled.verify.inputs import gallery
 from settled.verify.result import Trace, trace
 from settled.verify.session import Settings
@@ -147,6 +147,14 @@ def test_only_the_part_that_matters_is_kept_rather_than_more_delays() -> None:
     found = schedule(made, PAIR.nodes, least=3)
     assert found.kind == "gate" and found.positions == (0, 1, 2, 3)
     assert schedule(made, PAIR.nodes, least=6).kind == "edge"
+
+
+def test_without_the_effort_for_small_numbers_there_are_larger_ones(monkeypatch: pytest.MonkeyPatch) -> None:
+    made = run_of(PULSE, "n", "x", "n", "x", "n", "x", "n")
+    monkeypatch.setattr(timing, "EFFORT", 1)
+    found = schedule(made, PULSE.nodes)
+    assert found.kind == "gate"
+    assert_happens(PULSE, made, found)
 
 
 def test_a_loop_goes_round_in_equal_times() -> None:
