@@ -10,13 +10,16 @@ A value is two words (can be 0, can be 1), one bit for each of many cases that a
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
+from heapq import heappop, heappush
 
 from settled.models.circuit import Circuit
-from settled.models.logic import TRUE, Expr, fold
+from settled.models.components import components
+from settled.models.logic import Expr, support, topological
 
 Value = tuple[int, int]
 Values = dict[str, Value]
+FREE: Value = (0, 0)
 
 
 def known(value: int | bool, cases: int = 1) -> Value:
@@ -34,17 +37,26 @@ def join(a: Value, b: Value) -> Value:
     return a[0] | b[0], a[1] | b[1]
 
 
-def evaluate(roots: Sequence[Expr], values: Mapping[str, Value], cases: int = 1) -> list[Value]:
-    """Ternary values of expressions (definitions, `stable` and `excited` resolved)."""
+class Ternary:
+    """Expressions made ready for ternary evaluation; `stable` and `excited` must have been resolved."""
 
-    def visit(e: Expr, args: list[Value]) -> Value:
-        if e.op == "var":
-            return values[e.name]
-        if e.op == "const":
-            return known(e is TRUE, cases)
-        return _operator(e.op, args)
+    def __init__(self, roots: Sequence[Expr]) -> None:
+        order = list(topological(roots))
+        place = {e: i for i, e in enumerate(order)}
+        self._lines = [(e.op, e.name, [place[a] for a in e.args]) for e in order]
+        self._roots = [place[r] for r in roots]
 
-    return fold(roots, visit)
+    def run(self, values: Mapping[str, Value], cases: int = 1) -> list[Value]:
+        """The roots' values, one bit for each case."""
+        done: list[Value] = []
+        for op, name, args in self._lines:
+            if op == "var":
+                done.append(values[name])
+            elif op == "const":
+                done.append(known(name == "1", cases))
+            else:
+                done.append(_operator(op, [done[a] for a in args]))
+        return [done[r] for r in self._roots]
 
 
 def _operator(op: str, args: list[Value]) -> Value:
@@ -64,29 +76,59 @@ def _operator(op: str, args: list[Value]) -> Value:
     return zero, one
 
 
-def spread(circuit: Circuit, values: Values, cases: int = 1) -> Values:
-    """Algorithm A: everything that nodes may become while the inputs keep their values."""
-    while True:
-        targets = evaluate([circuit.excitation[n] for n in circuit.nodes], values, cases)
-        after = values | {n: join(values[n], t) for n, t in zip(circuit.nodes, targets, strict=True)}
-        if after == values:
-            return values
-        values = after
+class Simulator:
+    """Three-valued simulation of a circuit. A node is evaluated again whenever something that it reads has changed."""
 
+    def __init__(self, circuit: Circuit) -> None:
+        self.circuit = circuit
+        reads = {n: support(circuit.excitation[n]) for n in circuit.nodes}
+        self._order = [n for part in components(reads) for n in part]
+        self._programs = [Ternary([circuit.excitation[n]]) for n in self._order]
+        self._readers: dict[str, list[int]] = {n: [] for n in circuit.signals}
+        for i, n in enumerate(self._order):
+            for signal in reads[n]:
+                self._readers[signal].append(i)
 
-def settle(circuit: Circuit, values: Values, cases: int = 1, held: Mapping[str, Value] | None = None) -> Values:
-    """Algorithm B, from a result of algorithm A: what nodes come to when every delay has passed.
+    def spread(self, values: Values, cases: int = 1) -> Values:
+        """Algorithm A: everything that nodes may become while the inputs keep their values."""
+        return self._follow(values, cases, join)
 
-    `held` gives, for a node, the cases in which it is held at 0 and at 1: there, only those ends are spoken of in
-    which the node has that value.
-    """
-    while True:
-        values = {s: _hold(v, (held or {}).get(s, (0, 0))) for s, v in values.items()}
-        targets = evaluate([circuit.excitation[n] for n in circuit.nodes], values, cases)
-        moved = {n: _hold(t, (held or {}).get(n, (0, 0))) for n, t in zip(circuit.nodes, targets, strict=True)}
-        if values | moved == values:
-            return values
-        values = values | moved
+    def settle(self, values: Values, cases: int = 1, held: Mapping[str, Value] | None = None) -> Values:
+        """Algorithm B, from a result of algorithm A: what nodes come to when every delay has passed.
+
+        `held` gives, for a node, the cases in which it is held at 0 and at 1: there, only those ends are spoken of in
+        which the node has that value.
+        """
+        fixed = held or {}
+        begin = {s: _hold(v, fixed.get(s, FREE)) for s, v in values.items()}
+        return self._follow(begin, cases, lambda _, target: target, fixed)
+
+    def targets(self, values: Values, cases: int = 1) -> Values:
+        """What each node's excitation comes to."""
+        return {n: p.run(values, cases)[0] for n, p in zip(self._order, self._programs, strict=True)}
+
+    def _follow(
+        self,
+        values: Values,
+        cases: int,
+        update: Callable[[Value, Value], Value],
+        held: Mapping[str, Value] | None = None,
+    ) -> Values:
+        now = dict(values)
+        queue = list(range(len(self._order)))
+        waiting = set(queue)
+        while queue:
+            i = heappop(queue)
+            waiting.discard(i)
+            n = self._order[i]
+            after = _hold(update(now[n], self._programs[i].run(now, cases)[0]), (held or {}).get(n, FREE))
+            if after != now[n]:
+                now[n] = after
+                for reader in self._readers[n]:
+                    if reader not in waiting:
+                        waiting.add(reader)
+                        heappush(queue, reader)
+        return now
 
 
 def _hold(value: Value, held: Value) -> Value:
@@ -98,11 +140,12 @@ def power_up(circuit: Circuit, vectors: Sequence[Mapping[str, int]]) -> list[tup
 
     The results of algorithms A and B for each vector.
     """
+    simulator = Simulator(circuit)
     settled = {n: unknown() for n in circuit.nodes}
     found = []
     for vector in vectors:
-        moved = spread(circuit, settled | {x: known(vector[x]) for x in circuit.inputs})
-        settled = settle(circuit, moved)
+        moved = simulator.spread(settled | {x: known(vector[x]) for x in circuit.inputs})
+        settled = simulator.settle(moved)
         found.append((moved, settled))
     return found
 
@@ -113,12 +156,13 @@ def resolving(circuit: Circuit, moved: Values, settled: Values) -> dict[str, lis
     `moved`, `settled`: results of algorithms A and B. In every end that the circuit comes to, the node then has this
     value: it is unknown only because the simulation forgets that an unknown which branches is one signal.
     """
+    simulator = Simulator(circuit)
     open_ = [n for n in circuit.nodes if settled[n] == unknown()]
     cases = (1 << 2 * len(open_)) - 1
     held = {n: (1 << 2 * i, 2 << 2 * i) for i, n in enumerate(open_)}
     wide = {s: (v[0] * cases, v[1] * cases) for s, v in moved.items()}
-    ends = settle(circuit, wide, cases, held)
-    targets = dict(zip(open_, evaluate([circuit.excitation[n] for n in open_], ends, cases), strict=True))
+    ends = simulator.settle(wide, cases, held)
+    targets = simulator.targets(ends, cases)
     return {n: [s for i, s in enumerate(open_) if _agree(ends[n], targets[s], i)] for n in open_}
 
 

@@ -21,8 +21,11 @@ from settled.verify.explicit.graph import MANY, Graph
 from settled.verify.explicit.hazards import Watch, shortest_flicker
 from settled.verify.explicit.oscillations import shortest_lasso
 from settled.verify.explicit.races import all_ends, nearest_ends, run_to
+from settled.verify.explicit.serial_steps import SerialSteps
 from settled.verify.limits import LimitReached, Limits
 from settled.verify.pairing import Schedule
+
+MOST_STEPS = 1_000_000
 
 
 class Agenda(NamedTuple):
@@ -83,9 +86,12 @@ class Responding(Packed):
         place = np.flatnonzero(self._waiting[self.outstanding(stable).astype(np.int64)])
         return place, self._advanced(stable[place])
 
-    def _arrivals(self, vertices: Words) -> tuple[Places, Words]:
+    def arrivals(self, vertices: Words) -> tuple[Places, Words]:
+        """The next instant of an agenda that has begun."""
         place = np.flatnonzero(self._arriving[self.outstanding(vertices).astype(np.int64)])
         return place, self._advanced(vertices[place])
+
+    _arrivals = arrivals
 
     def _advanced(self, vertices: Words) -> Words:
         number = self.outstanding(vertices).astype(np.int64)
@@ -101,12 +107,16 @@ class Responding(Packed):
 
 
 class Responses(Graph):
-    """The graph of responses from given vertices on. Raises `LimitReached` when it cannot be explored to the end."""
+    """The graph of responses from given vertices on. Raises `LimitReached` when it cannot be explored to the end.
+
+    With `serial` steps that can be taken apart are left out (see `serial_steps`).
+    """
 
     packed: Responding
 
-    def __init__(self, packed: Responding, limits: Limits, sources: Iterable[int]) -> None:
+    def __init__(self, packed: Responding, limits: Limits, sources: Iterable[int], serial: SerialSteps | None) -> None:
         packed.seal()
+        self.serial = serial
         super().__init__(packed, limits, np.unique(np.array(list(sources), np.uint64)))
         if self.unfinished is not None:
             raise LimitReached(self.unfinished)
@@ -114,8 +124,17 @@ class Responses(Graph):
     def held(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the nodes alone: what is on the agenda is done in the end, so nothing goes on for ever before."""
         idle = np.flatnonzero(self.packed.outstanding(vertices) == 0)
-        source, target = super().held(vertices[idle])
+        here = vertices[idle]
+        source, target = self.serial.steps(here, self.packed.excited(here)) if self.serial else super().held(here)
         return idle[source], target
+
+    def steps(self, vertices: Words) -> tuple[Places, Words]:
+        """Steps of the response: of the nodes, and what comes next on the agenda."""
+        if self.serial is None:
+            return super().steps(vertices)
+        source, target = self.serial.steps(vertices, self.packed.excited(vertices))
+        place, arrived = self.packed.arrivals(vertices)
+        return np.concatenate([source, place]), np.concatenate([target, arrived])
 
     @cached_property
     def unsettled(self) -> Bits:
@@ -161,7 +180,7 @@ class Replies:
 
     def __init__(self, circuit: Circuit, signals: tuple[str, ...], limits: Limits, flickers: bool = False) -> None:
         self.circuit, self.signals, self.limits, self.flickers = circuit, signals, limits, flickers
-        self.packed = Responding(circuit)
+        self.packed, self._serial = Responding(circuit), SerialSteps(circuit, limits)
         self._program = Program(circuit.resolve(*map(circuit.signal, signals)))
         self._known: dict[tuple[int, Schedule], Reply] = {}
         self._values: dict[int, int] = {}
@@ -173,7 +192,7 @@ class Replies:
         if not fresh:
             return
         words = [self.packed.word(state, Agenda(rest)) for state, rest in fresh]
-        graph = Responses(self.packed, self.limits, words)
+        graph = Responses(self.packed, self.limits, words, self._serial)
         nothing = np.zeros_like(graph.vertices)
         once, twice = graph.flickers(Watch(graph, self.signals)) if self.flickers else (nothing, nothing)
         for key, v in zip(fresh, graph.index(np.array(words, np.uint64)).tolist(), strict=True):
@@ -229,8 +248,12 @@ class Replies:
         return self._states(graph, path + rest), signal, len(path) - 1
 
     def _single(self, state: int, schedule: Schedule) -> Responses:
+        """The response to one change, with all its steps unless they are too many for the shortest run to be found."""
         word = self.packed.word(state, Agenda(schedule, begun=False))
-        return Responses(self.packed, self.limits, [word])
+        graph = Responses(self.packed, self.limits, [word], self._serial)
+        if np.exp2(np.bitwise_count(graph.excited).astype(np.float64)).sum() > MOST_STEPS:
+            return graph
+        return Responses(self.packed, self.limits, [word], None)
 
     def _states(self, graph: Responses, path: Sequence[int]) -> list[int]:
         states: list[int] = (graph.vertices[np.array(path, np.int64)] & self.packed.state_mask).tolist()
