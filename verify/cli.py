@@ -69,7 +69,8 @@ _FILE = "A property file (.toml), a netlist (.v, .sv), `-` (a property file from
 File = Annotated[str, typer.Argument(metavar="FILE", show_default=False, help=_FILE)]
 Files = Annotated[list[str], typer.Argument(metavar="FILE", show_default=False, help=_FILE)]
 Json = Annotated[bool, typer.Option("--json", help="Print the result document and nothing else.")]
-Out = Annotated[Path | None, typer.Option(metavar="DIR", callback=_directory, help="Write result.json into DIR.")]
+_OUT = "Write the document, a report for review, waveforms and test benches into DIR."
+Out = Annotated[Path | None, typer.Option(metavar="DIR", callback=_directory, help=_OUT)]
 Only = Annotated[list[str] | None, typer.Option(metavar="NAME", help="Check only the property NAME; repeatable.")]
 Seconds = Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Time limit for one property.")]
 States = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")]

@@ -39,15 +39,14 @@ def stable_places(behaviour: Behaviour, states: Sequence[int]) -> Iterator[int]:
     return (i for i in range(len(states) - 1, -1, -1) if behaviour.is_stable(states[i]))
 
 
-def events(circuit: Circuit, before: int, after: int) -> str:
-    """What changed between two total states, as the trade writes it: `a+ b-`; a simultaneous step joins with `/`."""
-    moved = [f"{s}{'+' if after >> i & 1 else '-'}" for i, s in enumerate(circuit.signals) if (before ^ after) >> i & 1]
-    return "/".join(moved)
+def moved(circuit: Circuit, before: int, after: int) -> list[str]:
+    """The inputs and nodes that differ between two total states, as events: `a+`, `b-`."""
+    return [f"{s}{'+' if after >> i & 1 else '-'}" for i, s in enumerate(circuit.signals) if (before ^ after) >> i & 1]
 
 
 def changed_inputs(circuit: Circuit, before: int, after: int) -> str:
     """The inputs that differ between two total states, as events."""
-    return events(circuit, before & circuit.input_mask, after & circuit.input_mask).replace("/", ", ")
+    return ", ".join(moved(circuit, before & circuit.input_mask, after & circuit.input_mask))
 
 
 def describe(circuit: Circuit, state: int) -> str:

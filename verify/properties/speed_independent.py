@@ -13,7 +13,7 @@ from settled.models.specification import Shape
 from settled.models.states import Behaviour
 from settled.verify.properties import Kind, Options
 from settled.verify.questions import Answer, Withdraws
-from settled.verify.responses import describe, events
+from settled.verify.responses import describe, moved
 
 
 def _question(_: Circuit, options: Options) -> Withdraws:
@@ -37,7 +37,8 @@ def _offends(behaviour: Behaviour, question: Withdraws, answer: Answer) -> tuple
         raise ValueError("the last step takes away no excitation that counts")
     due = ", ".join(f"{n} ({n}{'-' if before >> circuit.place[n] & 1 else '+'} was due)" for n in names)
     switched = [s for s in circuit.signals if (before ^ after) >> circuit.place[s] & 1]
-    sentence = f"In {describe(circuit, before)}, {events(circuit, before, after)} takes away the excitation of {due}."
+    step = "/".join(moved(circuit, before, after))
+    sentence = f"In {describe(circuit, before)}, {step} takes away the excitation of {due}."
     return sentence, {"switched": switched, "withdrawn": names}
 
 
