@@ -16,11 +16,11 @@ from settled.models.states import Behaviour, Run, Situation
 from settled.verify.engines import Engine
 from settled.verify.explicit.changes_thrice import ThreeChanges
 from settled.verify.explicit.graph import Graph
-from settled.verify.explicit.hazards import Watch, flickering, shortest_flicker
-from settled.verify.explicit.oscillations import shortest_lasso
-from settled.verify.explicit.progress import changeable, dead_ends, shortest_evasion
-from settled.verify.explicit.races import nearest_ends, run_to, shortest_race
-from settled.verify.explicit.withdrawals import shortest_withdrawal
+from settled.verify.explicit.hazards import Watch, flickering, least_flicker, rest_of_response
+from settled.verify.explicit.oscillations import least_oscillation
+from settled.verify.explicit.progress import changeable, dead_ends, least_evasion
+from settled.verify.explicit.races import Races
+from settled.verify.explicit.withdrawals import least_withdrawal
 from settled.verify.limits import LimitReached
 from settled.verify.questions import (
     Answer,
@@ -105,14 +105,9 @@ def _changes(graph: Graph) -> int:
 
 
 def run(graph: Graph, title: str, path: Sequence[int], loop: int | None = None) -> Run:
-    """The run through the vertices at `path`."""
-    return walked(graph, title, graph.vertices[np.array(path, np.int64)].tolist(), loop)
-
-
-def walked(graph: Graph, title: str, words: Sequence[int], loop: int | None = None) -> Run:
     """The run through these vertices."""
     mask = int(graph.packed.state_mask)
-    return Run(title, tuple(v & mask for v in words), loop, graph.packed.circuit.name)
+    return Run(title, tuple(v & mask for v in path), loop, graph.packed.circuit.name)
 
 
 def proved(graph: Graph, exercised: bool) -> Answer:
@@ -134,16 +129,15 @@ def reaches(task: Task, question: Reaches) -> Answer:
     stable = graph.excited == 0
     if question.only_stable:
         bad &= stable
-    hits = graph.earliest(np.flatnonzero(bad))
-    if len(hits):
-        return refuted(graph, [run(graph, "the run to it", graph.path_to(int(hits[0])))])
+    if bad.any():
+        return refuted(graph, [run(graph, "the run to it", graph.least_runs(np.flatnonzero(bad))[0])])
     return proved(graph, bool(stable.any()) if question.only_stable else True)
 
 
 def oscillates(task: Task, _: Oscillates) -> Answer:
     """Look for a sustained oscillation."""
     graph = explored(task)
-    found = shortest_lasso(graph)
+    found = least_oscillation(graph)
     if found is None:
         return proved(graph, bool(len(graph.change_edges.source) or len(graph.step_edges.source)))
     path, loop = found
@@ -154,7 +148,7 @@ def oscillates(task: Task, _: Oscillates) -> Answer:
 def diverges(task: Task, _: Diverges) -> Answer:
     """Look for an input change with two ends."""
     graph = explored(task)
-    found = shortest_race(graph)
+    found = Races(graph).least()
     if found is None:
         return proved(graph, len(graph.change_edges.source) > 0)
     titles = ("one ordering", "another ordering")
@@ -168,50 +162,47 @@ def flickers(task: Task, question: Flickers) -> Answer:
     bad = flickering(graph, watch)
     if not bad:
         return proved(graph, len(graph.change_edges.source) > 0)
-    found = shortest_flicker(graph, watch, bad)
-    assert found is not None, "a signal that flickers has a shortest run that shows it"
+    found = least_flicker(graph, watch, bad)
+    assert found is not None, "a signal that flickers has a run that shows it"
     path, signal = found
-    ends = nearest_ends(graph)
-    settled = int(ends.end[path[-1], 0])
-    rest = run_to(graph, ends, path[-1], settled)[1:] if settled >= 0 else []
-    shown = run(graph, "the run through the hazard", path + rest)
-    return refuted(graph, [shown], {"signal": signal, "offending_step": len(path) - 1, "settles": settled >= 0})
+    shown = run(graph, "the run through the hazard", path + rest_of_response(graph, path[-1]))
+    return refuted(graph, [shown], {"signal": signal, "offending_step": len(path) - 1})
 
 
 def diverges_after_three(task: Task, _: DivergesAfterThree) -> Answer:
     """Look for an essential hazard."""
     graph = explored(task)
     three = ThreeChanges(graph)
-    found = three.shortest()
+    found = three.least()
     if found is None:
-        return proved(graph, bool(three.after))
-    first, second, bit = found
-    rests = [int(graph.end[path].sum()) for path in (first, second)]
-    other = "after one change, another ordering" if rests[0] == rests[1] else "after three changes"
-    runs = [run(graph, title, path) for title, path in (("after one change", first), (other, second))]
-    return refuted(graph, runs, {"input": task.circuit.inputs[bit.bit_length() - 1]})
+        return proved(graph, three.exercised)
+    titles = [f"after {'one change' if number == 1 else 'three changes'}" for number in found.changes]
+    if titles[0] == titles[1]:
+        titles[1] += ", another ordering"
+    runs = [run(graph, title, path) for title, path in zip(titles, found.runs, strict=True)]
+    return refuted(graph, runs, {"input": task.circuit.inputs[found.bit.bit_length() - 1]})
 
 
 def withdraws(task: Task, question: Withdraws) -> Answer:
     """Look for a step that takes away an excitation."""
     graph = explored(task)
-    found = shortest_withdrawal(graph, question.excepted)
-    return proved(graph, True) if found is None else refuted(graph, [walked(graph, "the run to it", found)])
+    found = least_withdrawal(graph, question.excepted)
+    return proved(graph, True) if found is None else refuted(graph, [run(graph, "the run to it", found)])
 
 
 def deadlocks(task: Task, _: Deadlocks) -> Answer:
     """Look for a dead end."""
     graph = explored(task)
-    found = graph.earliest(dead_ends(graph))
+    found = dead_ends(graph)
     if not len(found):
         return proved(graph, True)
-    return refuted(graph, [run(graph, "the run to it", graph.path_to(int(found[0])))])
+    return refuted(graph, [run(graph, "the run to it", graph.least_runs(found)[0])])
 
 
 def evades(task: Task, question: Evades) -> Answer:
     """Look for a fair run that evades a goal."""
     graph = explored(task)
-    found = shortest_evasion(graph, question.source, question.target)
+    found = least_evasion(graph, question.source, question.target)
     if found is None:
         return proved(graph, bool(graph.packed.holds([question.source], graph.vertices).any()))
     return refuted(graph, [run(graph, "the run without the goal", *found)])

@@ -11,7 +11,7 @@ from settled.encodings.packed import Places, TooWide
 from settled.models.states import Behaviour, Run
 from settled.verify.engines import Engine
 from settled.verify.engines.exhaustive import AuditFailed
-from settled.verify.explicit.oscillations import shortest_lasso
+from settled.verify.explicit.oscillations import least_oscillation
 from settled.verify.explicit.power_up import PowerUp, Sequenced
 from settled.verify.limits import LimitReached
 from settled.verify.power_up import end_facts, lasting_values, start_facts, ternary_facts
@@ -26,7 +26,7 @@ def powers_up(task: Task, question: PowersUp) -> Answer:
         graph = PowerUp(Sequenced(task.circuit, question.vectors), task.limits)
     except TooWide as wide:
         raise LimitReached(str(wide)) from None
-    lasso = shortest_lasso(graph)
+    lasso = least_oscillation(graph)
     if lasso is not None:
         return _oscillates(question, graph, *lasso)
     if len(graph.ends) > 1:
@@ -40,7 +40,7 @@ def powers_up(task: Task, question: PowersUp) -> Answer:
 
 
 def _parts(task: Task, question: PowersUp, graph: PowerUp) -> Answer:
-    paths = [graph.run_states(graph.path_to(int(end))) for end in graph.ends[:2]]
+    paths = [graph.run_states(path) for path in graph.least_runs(graph.ends, 2)]
     apart = paths[0][0] != paths[1][0]
     titles = ("from one power-up state", "from another power-up state" if apart else "in another ordering")
     runs = [Run(title, states, None, task.circuit.name) for title, states in zip(titles, paths, strict=True)]
@@ -53,10 +53,11 @@ def _oscillates(question: PowersUp, graph: PowerUp, path: Sequence[int], loop: i
     states = graph.run_states(path)
     run = Run("once round the oscillation", states, len(states) - len(path) + loop, circuit.name)
     applied = graph.packed.applied(graph.vertices)
-    here = applied == applied[path[loop]]
+    (place,) = graph.index(np.array(path[loop : loop + 1], np.uint64))
+    here = applied == applied[place]
     moving = [core for core in graph.cores if here[core[0]]]
     lasting = lasting_values(circuit, _words(graph, np.concatenate([np.flatnonzero(graph.end & here), *moving])))
-    facts = {"ternary": ternary_facts(circuit, question.vectors[: int(applied[path[loop]]) + 1], lasting)}
+    facts = {"ternary": ternary_facts(circuit, question.vectors[: int(applied[place]) + 1], lasting)}
     return Answer("refuted", NAME, runs=(run,), ranged=_ranged(graph), facts=facts)
 
 

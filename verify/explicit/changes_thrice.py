@@ -3,99 +3,135 @@ switching circuits", recalled): where the internal states reached differ, the ci
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from functools import cached_property
+from typing import NamedTuple
 
 import numpy as np
 
+from settled.encodings.packed import Places, Words
 from settled.verify.explicit.graph import Graph
-from settled.verify.explicit.races import MANY, NONE, NearestEnds, all_ends, nearest_ends, run_to
+from settled.verify.explicit.nearest import Entries, Nearest, joined, pair_sums
+from settled.verify.explicit.normal_form import Ways
+from settled.verify.explicit.races import Pair, least_beginnings, least_pair
+from settled.verify.explicit.search import Key, Moves, Search
 
-Leg = tuple[int, int]
+LONG = 1 << 32
+"""More steps than any run has: with it, input changes and steps are compared as one number."""
+
+
+class Clash(NamedTuple):
+    """Two runs to different internal states, how many changes each is from the stable vertex on, the input's bit."""
+
+    runs: Pair
+    changes: tuple[int, int]
+    bit: int
 
 
 class ThreeChanges:
-    """Outcomes of single input changes on the graph. A leg is (vertex just after a change, end of the response)."""
+    """Outcomes of one and of three changes of a single input on the graph."""
 
     def __init__(self, graph: Graph) -> None:
-        self.graph = graph
-        self.internal = (graph.vertices & graph.packed.state_mask) >> np.uint64(graph.packed.inputs)
+        self.graph, self.packed = graph, graph.packed
+        edges = graph.change_edges
+        self.flips = graph.vertices[edges.source] ^ graph.vertices[edges.target]
+        self.exercised = bool((np.bitwise_count(self.flips) == 1).any())
+
+    def least(self) -> Clash | None:
+        """The least two runs, over all stable vertices and inputs, that end in different internal states, or None."""
+        bits, pairs = [np.zeros(0, np.int64)], [self._none]
+        for bit in (1 << i for i in range(self.packed.inputs)):
+            pairs.append(self._clashing(bit))
+            bits.append(np.full(len(pairs[-1]) // 2, bit))
+        which, two = np.concatenate(bits), joined(*pairs)
+        if not len(which):
+            return None
+        source = two.owner[::2]
+        rounds, steps = self.graph.lengths(source)
+        inputs = 2 * rounds + pair_sums(two.steps // LONG)
+        lengths = inputs, 2 * steps + pair_sums(two.steps % LONG), pair_sums(two.nodes)
+        kept, paths = least_beginnings(self.graph, source, lengths)
+        found = [self._clash(path, int(which[i])) for i, path in zip(kept, paths, strict=True)]
+        least = least_pair(self.graph, [clash.runs for clash in found])
+        return next(clash for clash in found if clash.runs is least)
+
+    @property
+    def _none(self) -> Entries:
+        return Entries(*(np.zeros(0, np.int64) for _ in range(4)))
+
+    def _clashing(self, bit: int) -> Entries:
+        """For one input the stable vertices with two outcomes, each as the owner of two rows.
+
+        The changes count among the steps, and once more as `LONG`.
+        """
+        once = self._after(bit, self._ends)
+        thrice = once
+        for _ in range(2):
+            thrice = self._after(bit, Nearest(self.graph, thrice))
+        both = joined(once, thrice)
+        changes = np.repeat([LONG, 3 * LONG], [len(once), len(thrice)])
+        two = Entries(both.owner, both.label, both.steps + changes, both.nodes).two_each()
+        _, count = np.unique(two.owner, return_counts=True)
+        return two.at(np.flatnonzero(np.repeat(count, count) == 2))
+
+    def _after(self, bit: int, ends: Nearest) -> Entries:
+        """What can be reached by one more change: a row's owner is the stable vertex before it."""
+        edges, place = self.graph.change_edges, np.flatnonzero(self.flips == np.uint64(bit))
+        rows = ends.of(edges.target[place])
+        return Entries(edges.source[place][rows.owner], rows.label, rows.steps + 1, rows.nodes)
 
     @cached_property
-    def after(self) -> dict[tuple[int, int], int]:
-        """For a stable vertex and the bit of an input: the vertex just after that input alone has changed."""
-        edges, vertices = self.graph.change_edges, self.graph.vertices
-        flips = vertices[edges.source] ^ vertices[edges.target]
-        alone = np.bitwise_count(flips) == 1
-        rows = zip(edges.source[alone].tolist(), flips[alone].tolist(), edges.target[alone].tolist(), strict=True)
-        return {(source, bit): target for source, bit, target in rows}
+    def _ends(self) -> Nearest:
+        ends = np.flatnonzero(self.graph.end)
+        nothing = np.zeros(len(ends), np.int64)
+        return Nearest(self.graph, Entries(ends, self._internal(self.graph.vertices[ends]), nothing, nothing))
 
-    @cached_property
-    def _near(self) -> NearestEnds:
-        return nearest_ends(self.graph)
+    def _internal(self, words: Words) -> Places:
+        """Internal states, as numbers."""
+        return ((words & self.packed.state_mask) >> np.uint64(self.packed.inputs)).astype(np.int64)
 
-    def ends(self, vertex: int) -> list[int]:
-        """The ends of the response from a vertex just after a change."""
-        only = int(self.graph.outcome[vertex])
-        return [] if only == NONE else all_ends(self.graph, vertex) if only == MANY else [only]
+    # ---- the ways on from one stable vertex --------------------------------------------------------------------------
 
-    def outcomes(self, stable: int, bit: int) -> Iterator[list[Leg]]:
-        """Ways to an outcome: one leg each after one change, then three legs each after three changes."""
-        once = self._legs(stable, bit)
-        yield from ([leg] for leg in once)
-        for one in once:
-            for two in self._legs(one[1], bit):
-                for three in self._legs(two[1], bit):
-                    yield [one, two, three]
-
-    def _legs(self, stable: int, bit: int) -> list[Leg]:
-        vertex = self.after.get((stable, bit))
-        return [] if vertex is None else [(vertex, end) for end in self.ends(vertex)]
-
-    def clash(self, stable: int, bit: int) -> tuple[list[Leg], list[Leg]] | None:
-        """Two ways to different internal states, or None."""
-        first: list[Leg] | None = None
-        for legs in self.outcomes(stable, bit):
-            first = first or legs
-            if self.internal[legs[-1][1]] != self.internal[first[-1][1]]:
-                return first, legs
-        return None
-
-    def shortest(self) -> tuple[list[int], list[int], int] | None:
-        """The two runs (as indices) with the fewest changes and steps that end apart, and the input's bit."""
-        best: tuple[tuple[int, int], list[int], list[int], int] | None = None
-        for stable, bit in self.after:
-            pair = self.clash(stable, bit)
-            if pair is None:
-                continue
-            first, second = (self._run(stable, legs) for legs in pair)
-            rounds, steps = self.graph.key(stable)
-            length = (rounds + len(pair[1]), steps + len(first) + len(second))
-            if best is None or length < best[0]:
-                before = self.graph.path_to(stable)
-                best = (length, before + first, before + second, bit)
-        return best[1:] if best else None
-
-    def _run(self, stable: int, legs: list[Leg]) -> list[int]:
-        path: list[int] = []
-        for vertex, end in legs:
-            near = end in self._near.end[vertex]
-            path += run_to(self.graph, self._near, vertex, end) if near else self._walk(vertex, end)
-        return path
-
-    def _walk(self, start: int, end: int) -> list[int]:
-        parent: dict[int, int | None] = {start: None}
-        queue = [start]
-        for here in queue:
-            if here == end:
+    def _clash(self, before: list[int], bit: int) -> Clash:
+        """The two least ways on from the end of a run to different internal states by changes of one input."""
+        search = Search(self.packed, self.packed.bits + 2, self._counting(bit), self.graph.limits_for(4))
+        search.begin(np.array(before[-1:], np.uint64)).run()
+        goals = self._goals(search)
+        ways = Ways(search, goals)
+        found: dict[int, list[int]] = {}
+        for key, word in ways.ordered(goals):
+            label = int(self._internal(np.array([word], np.uint64))[0])
+            found.setdefault(label, ways.run(key, word))
+            if len(found) == 2:
                 break
-            _, after = self.graph.step_edges.out_of(np.array([here]))
-            for v in sorted(set(after.tolist()) - set(parent)):
-                parent[v] = here
-                queue.append(v)
-        path: list[int] = []
-        at: int | None = end
-        while at is not None:
-            path.append(at)
-            at = parent[at]
-        return path[::-1]
+        one, two = found.values()
+        changes = one[-1] >> self.packed.bits, two[-1] >> self.packed.bits
+        low = (1 << self.packed.bits) - 1
+        runs = before[:-1] + [w & low for w in one], before[:-1] + [w & low for w in two]
+        return Clash(runs, changes, bit)
+
+    def _counting(self, bit: int) -> Moves:
+        """Steps of the response, and up to three changes of one input; the marks count the changes."""
+        low = np.uint64((1 << self.packed.bits) - 1)
+
+        def moves(words: Words) -> tuple[Places, Words]:
+            plain = words & low
+            source, target = self.graph.known(*self.graph.steps(plain))
+            early = np.flatnonzero(words <= low | np.uint64(2 << self.packed.bits))
+            changed, after = self.graph.known(*self.graph.changes(plain[early]))
+            lawful = np.flatnonzero(plain[early][changed] ^ after == np.uint64(bit))
+            changed, after = early[changed[lawful]], after[lawful]
+            more = (words[changed] & ~low) + np.uint64(1 << self.packed.bits)
+            return np.concatenate([source, changed]), np.concatenate([target | words[source] & ~low, after | more])
+
+        return moves
+
+    def _goals(self, search: Search) -> dict[Key, Words]:
+        """The ends reached after one and after three changes."""
+        low, odd = np.uint64((1 << self.packed.bits) - 1), np.uint64(1 << self.packed.bits)
+        goals = {}
+        for key, words in search.layers.items():
+            plain = words & low
+            ends = words[self.packed.ends(plain, self.packed.excited(plain)) & (words & odd != 0)]
+            if len(ends):
+                goals[key] = ends
+        return goals

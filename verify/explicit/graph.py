@@ -3,13 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from functools import cached_property
+from itertools import islice
 
 import numpy as np
 import numpy.typing as npt
 
 from settled.encodings.packed import Bits, Packed, Places, Words
 from settled.verify.explicit.edges import Edges, fair_components
+from settled.verify.explicit.normal_form import Ways
 from settled.verify.explicit.search import Key, Moves, Search, blocks, distinct
 from settled.verify.explicit.starts import starts
 from settled.verify.limits import LimitReached, Limits
@@ -27,8 +30,8 @@ class Graph:
 
     def __init__(self, packed: Packed, limits: Limits, sources: Words | None = None) -> None:
         self.packed, self.limits = packed, limits
-        self.search = Search(packed.bits, packed.input_mask, self.moves, limits)
-        self.search.begin({(0, 0): starts(packed, limits) if sources is None else sources})
+        self.search = Search(packed, packed.bits, self.moves, limits)
+        self.search.begin(starts(packed, limits) if sources is None else sources)
         self.explore(limits)
 
     def explore(self, limits: Limits) -> None:
@@ -53,6 +56,15 @@ class Graph:
         self.excited: Words = self.packed.excited(self.vertices)
         self.end: Bits = self.packed.ends(self.vertices, self.excited)
 
+    @property
+    def starts(self) -> Words:
+        """The vertices from which the search began."""
+        return self.search.layers[0, 0]
+
+    def limits_for(self, copies: int) -> Limits:
+        """Limits for a search through the known vertices in several copies."""
+        return replace(self.limits, states=copies * len(self))
+
     def __len__(self) -> int:
         return len(self.vertices)
 
@@ -60,25 +72,40 @@ class Graph:
         """(changes, steps) of the shortest run to a vertex."""
         return self.keys[int(self.layer[index])]
 
-    def earliest(self, indices: Places) -> Places:
-        """`indices` ordered by the length of the shortest run to them, then by value."""
-        return indices[np.lexsort((indices, self.layer[indices]))]
-
     def lengths(self, indices: Places) -> tuple[Places, Places]:
         """Changes and steps of the shortest run to each vertex."""
         table = np.array(self.keys, np.int64)[self.layer[indices]]
         return table[:, 0], table[:, 1]
 
-    def path_to(self, index: int) -> list[int]:
-        """A shortest run from a start state to a vertex, as indices."""
-        words = [v for _, v in self.search.path(self.key(index), int(self.vertices[index]))]
-        return self.index(np.array(words, np.uint64)).tolist()
+    def by_key(self, indices: Places) -> dict[Key, Words]:
+        """The vertices at `indices` by the length of the shortest run to them."""
+        numbers = self.layer[indices]
+        return {self.keys[n]: self.vertices[indices[numbers == n]] for n in np.unique(numbers).tolist()}
+
+    def ways(self, indices: Places) -> Ways:
+        """The least runs to each of these vertices."""
+        return Ways(self.search, self.by_key(indices))
+
+    def least_runs(self, indices: Places, most: int = 1) -> list[list[int]]:
+        """Runs from a start state, as vertices, to those `most` of `indices` whose least runs come first."""
+        goals, ways = self.by_key(indices), self.ways(indices)
+        return [ways.run(*goal) for goal in islice(ways.ordered(goals), most)]
+
+    def least_to(self, indices: Places) -> dict[int, tuple[int, list[int]]]:
+        """For each of several vertices the switchings of nodes on the least run to it, and that run, as vertices."""
+        ways = self.ways(indices)
+        return {i: ways.found(self.key(i), int(self.vertices[i])) for i in indices.tolist()}
 
     def index(self, words: Words) -> Places:
         """Positions of words in `vertices`; -1 for those that were not reached."""
         place = np.searchsorted(self.vertices, words)
         place[place == len(self)] = 0
         return np.where(self.vertices[place] == words, place, -1) if len(self) else place - 1
+
+    def known(self, source: Places, target: Words) -> tuple[Places, Words]:
+        """Those of some moves that lead to vertices: of an unfinished search not all do."""
+        kept = np.flatnonzero(self.index(target) >= 0)
+        return source[kept], target[kept]
 
     def moves(self, vertices: Words) -> tuple[Places, Words]:
         """Every move: steps, and changes that the environment makes of its own accord."""

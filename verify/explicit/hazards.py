@@ -1,4 +1,4 @@
-"""Hazards on the graph: which signals can change more than once in one response, and the shortest run that shows it.
+"""Hazards on the graph: which signals can change more than once in one response, and the least run that shows it.
 
 A response is followed with one tag a signal: the value that the signal had in the stable state before the change.
 A signal whose value is not the tag has changed; back at the tag it has changed twice.
@@ -11,7 +11,8 @@ import numpy as np
 from settled.encodings.packed import Bits, Places, Words
 from settled.models.logic import Program
 from settled.verify.explicit.graph import Graph
-from settled.verify.explicit.search import Key, Search
+from settled.verify.explicit.normal_form import least_run
+from settled.verify.explicit.search import Search
 
 ONE = np.uint64(1)
 
@@ -54,78 +55,80 @@ def flickering(graph: Graph, watch: Watch) -> int:
     return int(bad) & (1 << len(watch.signals)) - 1
 
 
-def shortest_flicker(graph: Graph, watch: Watch, bad: int) -> tuple[list[int], str] | None:
-    """The shortest run (as indices) up to the second change of one of the signals in the packed set `bad`."""
+def least_flicker(graph: Graph, watch: Watch, bad: int) -> tuple[list[int], str] | None:
+    """The least run (as vertices) up to the second change of one of the signals in the packed set `bad`."""
     tagged = Tagged(graph, watch, [i for i in range(len(watch.signals)) if bad >> i & 1])
-    moves = Search(tagged.bits, graph.packed.input_mask, tagged.steps, graph.limits, tagged.flagged)
-    search = moves.begin(tagged.sources()).run()
-    if search.hit is None:
+    limits = graph.limits_for(1 + 2 * bad.bit_count())
+    search = Search(graph.packed, tagged.bits, tagged.moves, limits, tagged.flagged)
+    hit = search.begin(graph.starts).run().hit
+    if hit is None:
         return None
-    path = search.path(*search.hit)
-    plain = [int(graph.index(tagged.plain(np.array([v], np.uint64)))[0]) for _, v in path]
-    before = tagged.before(path[0])
-    return graph.path_to(before) + plain, watch.signals[tagged.number(path[0][1])]
+    run = least_run(search, dict([hit]))
+    return tagged.plain(run), tagged.signal(run[-1])
+
+
+def rest_of_response(graph: Graph, vertex: int) -> list[int]:
+    """The least way on from a vertex to the end of its response, the vertex left out; empty if none is reached."""
+    packed = graph.packed
+
+    def ends(words: Words) -> Bits:
+        return packed.ends(words, packed.excited(words))
+
+    search = Search(packed, packed.bits, graph.steps, graph.limits, ends)
+    hit = search.begin(np.array([vertex], np.uint64)).run().hit
+    return least_run(search, dict([hit]))[1:] if hit else []
 
 
 class Tagged:
-    """Vertices with the watched signal's number, its value before the change, and whether it came back to it."""
+    """Vertices and, in a response followed for one signal: its tag, whether it is back at it, the signal's number.
+
+    Signals are numbered from 1 on here; number 0 is a vertex that is not followed.
+    """
 
     def __init__(self, graph: Graph, watch: Watch, chosen: list[int]) -> None:
         self.graph, self.watch, self.chosen = graph, watch, chosen
-        self.low = graph.packed.bits
-        self.bits = self.low + 2 + max(1, len(watch.signals).bit_length())
+        bits = graph.packed.bits
+        self.low = np.uint64((1 << bits) - 1)
+        self.tag, self.back, self.number = (np.uint64(bits + i) for i in range(3))
+        self.bits = bits + 2 + len(watch.signals).bit_length()
         if self.bits > 64:
             graph.limits.refuse(f"{self.bits} bits a watched total state; at most 64 fit")
 
-    def plain(self, tagged: Words) -> Words:
-        """The vertices without their tags."""
-        return tagged & np.uint64((1 << self.low) - 1)
+    def moves(self, words: Words) -> tuple[Places, Words]:
+        """Every move; at each change of the environment one of the signals may begin to be followed."""
+        followed = words > self.low
+        plain, tagged = np.flatnonzero(~followed), np.flatnonzero(followed)
+        source, target = self.graph.moves(words[plain])
+        sources, targets = [plain[source]], [target]
+        changed, after = self.graph.changes(words[plain])
+        before = self.watch(words[plain])[changed]
+        for i in self.chosen:
+            sources.append(plain[changed])
+            tag = (before >> np.uint64(i) & ONE) << self.tag
+            targets.append(after | tag | np.uint64(i + 1) << self.number)
+        source, target = self.graph.steps(words[tagged] & self.low)
+        sources.append(tagged[source])
+        targets.append(self._follow(words[tagged][source], target))
+        return np.concatenate(sources), np.concatenate(targets)
 
-    def number(self, tagged: int) -> int:
-        """The position of the watched signal."""
-        return tagged >> (self.low + 2)
-
-    def sources(self) -> dict[Key, Words]:
-        """What every change makes of every stable vertex, tagged, by the key of the run to it."""
-        edges, value = self.graph.change_edges, self.watch(self.graph.vertices)
-        rounds, steps = self.graph.lengths(edges.source)
-        found: dict[Key, list[Words]] = {}
-        for key in sorted(set(zip(rounds.tolist(), steps.tolist(), strict=True))):
-            here = (rounds == key[0]) & (steps == key[1])
-            vertices = self.graph.vertices[edges.target[here]]
-            tags = [
-                vertices | (value[edges.source[here]] >> np.uint64(i) & ONE) << np.uint64(self.low)
-                | np.uint64(i << (self.low + 2))
-                for i in self.chosen
-            ]
-            found[key[0] + 1, key[1] + 1] = tags
-        return {key: np.concatenate(tags) for key, tags in found.items()}
-
-    def steps(self, tagged: Words) -> tuple[Places, Words]:
-        """Steps of the response, the tag kept, the mark set when the signal is back."""
-        plain = self.plain(tagged)
-        source, target = self.graph.steps(plain)
-        tag = tagged[source] ^ plain[source]
-        left = self._differs(tagged)[source]
-        back = left & ~self._differs(target | tag)
-        return source, target | tag | back.astype(np.uint64) << np.uint64(self.low + 1)
-
-    def flagged(self, tagged: Words) -> Bits:
+    def flagged(self, words: Words) -> Bits:
         """Whether the signal is back at its old value."""
-        return tagged >> np.uint64(self.low + 1) & ONE != 0
+        return words >> self.back & ONE != 0
 
-    def before(self, first: tuple[Key, int]) -> int:
-        """The earliest stable vertex whose change gave the first vertex of a tagged run."""
-        (rounds, steps), tagged = first
-        edges = self.graph.change_edges
-        target = int(self.graph.index(np.array([tagged & (1 << self.low) - 1], np.uint64))[0])
-        source, _ = edges.into(np.array([target]))
-        value = self.watch(self.graph.vertices[source]) >> np.uint64(self.number(tagged)) & ONE
-        at_rounds, at_steps = self.graph.lengths(source)
-        fits = (value == tagged >> self.low & 1) & (at_rounds == rounds - 1) & (at_steps == steps - 1)
-        return int(source[fits].min())
+    def plain(self, run: list[int]) -> list[int]:
+        """The run without tags."""
+        return [word & int(self.low) for word in run]
+
+    def signal(self, word: int) -> str:
+        """The signal that is followed."""
+        return self.watch.signals[(word >> int(self.number)) - 1]
+
+    def _follow(self, before: Words, after: Words) -> Words:
+        """Steps of the response, the tag kept, the mark set when the signal is back."""
+        tagged = after | before & ~self.low & ~(ONE << self.back)
+        back = self._differs(before) & ~self._differs(tagged)
+        return tagged | back.astype(np.uint64) << self.back
 
     def _differs(self, tagged: Words) -> Bits:
-        number = tagged >> np.uint64(self.low + 2)
-        value = self.watch(self.plain(tagged)) >> number
-        return (value ^ tagged >> np.uint64(self.low)) & ONE != 0
+        value = self.watch(tagged & self.low) >> ((tagged >> self.number) - ONE)
+        return (value ^ tagged >> self.tag) & ONE != 0

@@ -69,13 +69,13 @@ class PowerUp(Graph):
 
     @property
     def ends(self) -> Places:
-        """The stable vertices under the last vector, those with the shortest runs first."""
+        """The stable vertices under the last vector."""
         last = self.packed.applied(self.vertices) == len(self.packed.vectors) - 1
-        return self.earliest(np.flatnonzero(self.end & last))
+        return np.flatnonzero(self.end & last)
 
     def run_states(self, path: Sequence[int]) -> tuple[int, ...]:
         """The total states along vertices; a vector that changes nothing leaves no step."""
-        states = (self.vertices[np.array(path, np.int64)] & self.packed.state_mask).tolist()
+        states = [word & int(self.packed.state_mask) for word in path]
         return tuple(s for i, s in enumerate(states) if i == 0 or s != states[i - 1])
 
     def escaping(self, behaviour: Behaviour) -> int | None:

@@ -1,107 +1,156 @@
-"""Races on the graph: for each vertex the two nearest ends of its response, with their distances."""
+"""Races on the graph: input changes and bursts whose response has two ends, and the least pair of runs to them."""
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from functools import cached_property
+from itertools import islice
 
 import numpy as np
 
-from settled.encodings.packed import Places
-from settled.verify.explicit.edges import Edges
-from settled.verify.explicit.graph import MANY, NONE, Graph
+from settled.encodings.packed import Bits, Places, Words
+from settled.verify.explicit.graph import MANY, Graph
+from settled.verify.explicit.nearest import Entries, nearest_ends, pair_sums
+from settled.verify.explicit.normal_form import Ways, first_of_each, values
+from settled.verify.explicit.search import Key, Search
 
-FAR = np.int64(1) << 40
-
-
-@dataclass
-class NearestEnds:
-    """`end[:, k]` and `distance[:, k]`: the k-th nearest end (k = 0, 1) of every vertex, -1 and `FAR` if none."""
-
-    end: Places
-    distance: Places
+Path = list[int]
+Pair = tuple[Path, Path]
 
 
-def nearest_ends(graph: Graph) -> NearestEnds:
-    """Layered search backwards from all ends; a vertex passes on only the two nearest ends it has."""
-    size = len(graph)
-    end = np.full((size, 2), -1, np.int64)
-    distance = np.full((size, 2), FAR, np.int64)
-    vertex = target = np.flatnonzero(graph.end)
-    steps = 0
-    while len(vertex):
-        vertex, target = _take(end, distance, vertex, target, steps)
-        owner, place = _sources(graph.step_edges, vertex)
-        vertex, target = owner, target[place]
-        steps += 1
-    return NearestEnds(end, distance)
+@dataclass(frozen=True)
+class Changes:
+    """The input changes and bursts of the graph. `group[e]`: the number of the one that change edge `e` begins.
+
+    Beside each number: `source`, the vertex before, and `inputs`, how many steps of a run change an input for it.
+    """
+
+    group: Places
+    source: Places
+    inputs: Places
+
+    @classmethod
+    def of(cls, graph: Graph) -> Changes:
+        """Those of a graph, in the order of the vertices before them and of what changes."""
+        edges, packed = graph.change_edges, graph.packed
+        before, after = graph.vertices[edges.source], graph.vertices[edges.target]
+        picked = ((before ^ after) & packed.input_mask) | packed.outstanding(after)
+        order = np.lexsort((picked, edges.source))
+        fresh = first_of_each(edges.source[order]) | first_of_each(picked[order])
+        group = np.zeros(len(order), np.int64)
+        group[order] = np.cumsum(fresh) - 1
+        alike = np.bitwise_count(picked).astype(np.int64) if packed.burst else np.ones(len(picked), np.int64)
+        return cls(group, edges.source[order][fresh], alike[order][fresh])
 
 
-def _take(end: Places, distance: Places, vertex: Places, target: Places, steps: int) -> tuple[Places, Places]:
-    order = np.lexsort((target, vertex))
-    vertex, target = vertex[order], target[order]
-    fresh = np.ones(len(vertex), bool)
-    fresh[1:] = (vertex[1:] != vertex[:-1]) | (target[1:] != target[:-1])
-    fresh &= (end[vertex, 0] != target) & (end[vertex, 1] < 0)
-    vertex, target = vertex[fresh], target[fresh]
-    first = np.ones(len(vertex), bool)
-    first[1:] = vertex[1:] != vertex[:-1]
-    second = np.zeros(len(vertex), bool)
-    second[1:] = ~first[1:] & first[:-1]
-    kept = first | (second & (end[vertex, 0] < 0))
-    vertex, target, second = vertex[kept], target[kept], second[kept]
-    slot = np.where(second | (end[vertex, 0] >= 0), 1, 0)
-    end[vertex, slot], distance[vertex, slot] = target, steps
-    return vertex, target
+class Races:
+    """The critical races of a graph, one for each input change or burst."""
+
+    def __init__(self, graph: Graph) -> None:
+        self.graph = graph
+        self.changes = Changes.of(graph)
+        self.numbers = np.flatnonzero(self._open())
+
+    def _open(self) -> Bits:
+        """Whether each change can end differently."""
+        first = self.graph.outcome[self.graph.change_edges.target]
+        size, group = len(self.changes.source), self.changes.group
+        low, high = np.full(size, len(self.graph), np.int64), np.full(size, -1, np.int64)
+        np.minimum.at(low, group[first >= 0], first[first >= 0])
+        np.maximum.at(high, group[first >= 0], first[first >= 0])
+        found = low < high
+        found[group[first == MANY]] = True
+        return found
+
+    @cached_property
+    def _lengths(self) -> tuple[Places, Places, Places]:
+        """Of each race the pair's steps that change an input, its steps, and its switchings after the change."""
+        edges = self.graph.change_edges
+        racing = np.flatnonzero(np.isin(self.changes.group, self.numbers))
+        near = nearest_ends(self.graph).of(edges.target[racing])
+        owner = self.changes.group[racing][near.owner]
+        two = Entries(owner, near.label, near.steps, near.nodes).two_each()
+        rounds, steps = self.graph.lengths(self.changes.source[self.numbers])
+        inputs = 2 * (rounds + self.changes.inputs[self.numbers])
+        return inputs, 2 * (steps + 1) + pair_sums(two.steps), pair_sums(two.nodes)
+
+    def least(self) -> Pair | None:
+        """The least pair of runs (as vertices, from the same start state) that end differently, or None."""
+        if not len(self.numbers):
+            return None
+        numbers, paths = least_beginnings(self.graph, self.changes.source[self.numbers], self._lengths)
+        pairs = [(self.pair(number, path)) for number, path in zip(self.numbers[numbers].tolist(), paths, strict=True)]
+        return least_pair(self.graph, pairs)
+
+    def pair(self, number: int, before: Path) -> Pair:
+        """The least pair of runs of one race that go on from the run `before` it."""
+        one, two = islice(self.endings(number), 2)
+        return before[:-1] + one, before[:-1] + two
+
+    def endings(self, number: int) -> Iterator[Path]:
+        """For each end of a change the least run from the vertex before the change to it, in their order."""
+        source = self.graph.vertices[self.changes.source[number]]
+        targets = self.graph.vertices[self.graph.change_edges.target[self.changes.group == number]]
+        search = response(self.graph, source, targets)
+        goals = ends_of(self.graph, search)
+        ways = Ways(search, goals)
+        return (ways.run(*goal) for goal in ways.ordered(goals))
 
 
-def _sources(edges: Edges, vertex: Places) -> tuple[Places, Places]:
-    """Sources of all edges into `vertex`, and for each the position in `vertex` that it leads to."""
-    order = np.argsort(vertex, kind="stable")
-    unique, first = np.unique(vertex[order], return_index=True)
-    count = np.diff(np.append(first, len(vertex)))
-    sources: list[Places] = []
-    places: list[Places] = []
-    for slot in (0, 1):
-        has = count > slot
-        before, owner = edges.into(unique[has])
-        where = order[first[has] + slot]
-        sources.append(before)
-        places.append(where[np.searchsorted(unique[has], owner)])
-    return np.concatenate(sources), np.concatenate(places)
+def response(graph: Graph, source: np.uint64, targets: Words) -> Search:
+    """The search through the response that goes from a stable vertex to `targets` and on."""
+
+    def moves(words: Words) -> tuple[Places, Words]:
+        place, target = graph.known(*graph.steps(words))
+        begin = np.flatnonzero(words == source)
+        first = np.repeat(begin, len(targets)), np.tile(targets, len(begin))
+        return np.concatenate([place, first[0]]), np.concatenate([target, first[1]])
+
+    search = Search(graph.packed, graph.packed.bits, moves, graph.limits_for(1))
+    return search.begin(np.array([source], np.uint64)).run()
 
 
-def run_to(graph: Graph, ends: NearestEnds, start: int, end: int) -> list[int]:
-    """A shortest run of the response from vertex `start` to its near end `end`, as indices, least first."""
-    path = [start]
-    while path[-1] != end:
-        here = path[-1]
-        left = _distance(ends, here, end)
-        _, after = graph.step_edges.out_of(np.array([here]))
-        path.append(min(int(v) for v in after if _distance(ends, int(v), end) == left - 1))
-    return path
+def ends_of(graph: Graph, search: Search) -> dict[Key, Words]:
+    """The ends that a search through a response has reached, by key."""
+    found = {}
+    for key, words in search.layers.items():
+        ends = words[graph.packed.ends(words, graph.packed.excited(words))]
+        if key != (0, 0) and len(ends):
+            found[key] = ends
+    return found
 
 
-def _distance(ends: NearestEnds, vertex: int, end: int) -> int:
-    for slot in (0, 1):
-        if ends.end[vertex, slot] == end:
-            return int(ends.distance[vertex, slot])
-    return int(FAR)
+def least_beginnings(
+    graph: Graph, sources: Places, lengths: tuple[Places, Places, Places]
+) -> tuple[list[int], list[Path]]:
+    """Which of several failures are the least, as far as that is settled by lengths and the runs before them.
+
+    `sources`: the vertex before each failure; `lengths`: of the pair of runs, the switchings after the vertex only.
+    Gives positions, each with the least run to its vertex.
+    """
+    inputs, steps, nodes = lengths
+    order = np.lexsort((steps, inputs))
+    kept = np.flatnonzero((inputs == inputs[order[0]]) & (steps == steps[order[0]]))
+    goals = graph.by_key(np.unique(sources[kept]))
+    ways = Ways(graph.search, goals)
+    before: dict[int, tuple[Key, int, int]] = {}
+    for key, words in goals.items():
+        rows = zip(words.tolist(), *(c.tolist() for c in ways.length(key, words)), strict=True)
+        before |= {word: (key, count, rank) for word, count, rank in rows}
+    words = graph.vertices[sources[kept]].tolist()
+    total = [nodes[i] + 2 * before[w][1] for i, w in zip(kept.tolist(), words, strict=True)]
+    tied = [(i, w) for i, w, t in zip(kept.tolist(), words, total, strict=True) if t == min(total)]
+    first: dict[int, int] = {}
+    for _, w in tied:
+        first[before[w][0][1]] = min(first.get(before[w][0][1], w), w, key=lambda v: before[v][2])
+    tied = [(i, w) for i, w in tied if w in first.values()]
+    return [i for i, _ in tied], [ways.run(before[w][0], w) for _, w in tied]
 
 
-def shortest_race(graph: Graph) -> tuple[list[int], list[int]] | None:
-    """The two runs (as indices, both from the same start state) of the shortest critical race, or None."""
-    edges = graph.change_edges
-    racing = np.flatnonzero(graph.outcome[edges.target] == MANY)
-    if not len(racing):
-        return None
-    ends = nearest_ends(graph)
-    source, target = edges.source[racing], edges.target[racing]
-    rounds, steps = graph.lengths(source)
-    cost = steps + ends.distance[target].sum(axis=1)
-    best = np.lexsort((target, source, cost, rounds))[0]
-    before, after = graph.path_to(int(source[best])), int(target[best])
-    first, second = (run_to(graph, ends, after, int(ends.end[after, slot])) for slot in (0, 1))
-    return before + first, before + second
+def least_pair(graph: Graph, pairs: Sequence[Pair]) -> Pair:
+    """Of pairs of runs with equal lengths the one with the least values."""
+    return min(pairs, key=lambda pair: [values(graph.packed, path) for path in pair])
 
 
 def all_ends(graph: Graph, start: int) -> list[int]:
@@ -113,6 +162,3 @@ def all_ends(graph: Graph, start: int) -> list[int]:
         frontier = sorted(set(after.tolist()) - seen)
         seen.update(frontier)
     return found
-
-
-__all__ = ["MANY", "NONE", "all_ends", "nearest_ends", "run_to", "shortest_race"]

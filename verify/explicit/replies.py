@@ -18,9 +18,9 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import Program
 from settled.verify.explicit.graph import MANY, Graph
-from settled.verify.explicit.hazards import Watch, shortest_flicker
-from settled.verify.explicit.oscillations import shortest_lasso
-from settled.verify.explicit.races import all_ends, nearest_ends, run_to
+from settled.verify.explicit.hazards import Watch, least_flicker, rest_of_response
+from settled.verify.explicit.oscillations import least_oscillation
+from settled.verify.explicit.races import all_ends
 from settled.verify.explicit.serial_steps import SerialSteps
 from settled.verify.limits import LimitReached, Limits
 from settled.verify.pairing import Schedule
@@ -226,26 +226,24 @@ class Replies:
     # ---- runs ----------------------------------------------------------------------------------------------------
 
     def run_to(self, state: int, schedule: Schedule, end: int) -> list[int]:
-        """The shortest run of a response to one of its ends, the state before the change first."""
+        """The least run of a response to one of its ends, the state before the change first."""
         graph = self._single(state, schedule)
-        return self._states(graph, graph.path_to(int(graph.index(np.array([end], np.uint64))[0])))
+        return self._states(*graph.least_runs(graph.index(np.array([end], np.uint64))))
 
     def lasso(self, state: int, schedule: Schedule) -> tuple[list[int], int]:
-        """The shortest run of a response that never settles, and the position at which its last state goes on."""
+        """The least run of a response that never settles, and the position at which its last state goes on."""
         graph = self._single(state, schedule)
-        found = shortest_lasso(graph)
+        found = least_oscillation(graph)
         assert found is not None, "a response that can fail to settle has a run that shows it"
-        return self._states(graph, found[0]), found[1]
+        return self._states(found[0]), found[1]
 
     def flicker(self, state: int, schedule: Schedule, signals: int) -> tuple[list[int], str, int]:
-        """The shortest run of a response in which one of `signals` changes twice, the signal, and the step."""
+        """The least run of a response in which one of `signals` changes twice, the signal, and the step."""
         graph = self._single(state, schedule)
-        found = shortest_flicker(graph, Watch(graph, self.signals), signals)
-        assert found is not None, "a signal that flickers has a shortest run that shows it"
+        found = least_flicker(graph, Watch(graph, self.signals), signals)
+        assert found is not None, "a signal that flickers has a run that shows it"
         path, signal = found
-        ends = nearest_ends(graph)
-        rest = run_to(graph, ends, path[-1], int(ends.end[path[-1], 0]))[1:]
-        return self._states(graph, path + rest), signal, len(path) - 1
+        return self._states(path + rest_of_response(graph, path[-1])), signal, len(path) - 1
 
     def _single(self, state: int, schedule: Schedule) -> Responses:
         """The response to one change, with all its steps unless they are too many for the shortest run to be found."""
@@ -255,6 +253,5 @@ class Replies:
             return graph
         return Responses(self.packed, self.limits, [word], None)
 
-    def _states(self, graph: Responses, path: Sequence[int]) -> list[int]:
-        states: list[int] = (graph.vertices[np.array(path, np.int64)] & self.packed.state_mask).tolist()
-        return states
+    def _states(self, path: Sequence[int]) -> list[int]:
+        return [word & int(self.packed.state_mask) for word in path]

@@ -14,7 +14,7 @@ from typing import TypeVar
 import numpy as np
 import numpy.typing as npt
 
-from settled.encodings.packed import Bits, Places, Words
+from settled.encodings.packed import Bits, Packed, Places, Words
 from settled.verify.limits import Limits
 
 Key = tuple[int, int]
@@ -77,20 +77,20 @@ class Known:
 
 @dataclass
 class Search:
-    """A layered search along `moves`; `flagged` ends it. The bits of `inputs` tell changes from mere steps.
+    """A layered search along `moves`; `flagged` ends it. Its words are vertices of `packed`, marks above them.
 
-    After `run`, `layers` holds the vertices by key (input changes, steps), least first, and `hit` the least flagged
-    vertex of the first layer that has one, with its key, or None. A search that a limit ended goes on where it was
-    when `run` is called again.
+    `bits`: how many a word has, with its marks. After `run`, `layers` holds the words by key (input changes, steps),
+    least first, and `hit` those of the first layer that are flagged, with its key, or None. A search that a limit
+    ended goes on where it was when `run` is called again.
     """
 
+    packed: Packed
     bits: int
-    inputs: np.uint64
     moves: Moves
     limits: Limits
     flagged: Callable[[Words], Bits] | None = None
     layers: dict[Key, Words] = field(default_factory=dict)
-    hit: tuple[Key, int] | None = None
+    hit: tuple[Key, Words] | None = None
     size: int = 0
 
     def __post_init__(self) -> None:
@@ -98,10 +98,9 @@ class Search:
         self._waiting: dict[Key, list[Words]] = {}
         self._queue: list[Key] = []
 
-    def begin(self, sources: dict[Key, Words]) -> Search:
-        """Put in vertices to explore from, by the key that they have already reached."""
-        for key, words in sources.items():
-            self._enqueue(key, words)
+    def begin(self, sources: Words) -> Search:
+        """Put in words to explore from."""
+        self._enqueue((0, 0), sources)
         return self
 
     def run(self) -> Search:
@@ -122,7 +121,7 @@ class Search:
         self.layers[key] = fresh
         self.size += len(fresh)
         if self.flagged is not None and (bad := fresh[self.flagged(fresh)]).size:
-            self.hit = (key, int(bad[0]))
+            self.hit = (key, bad)
         changed = self.changed(fresh[source], target)
         self._enqueue((key[0], key[1] + 1), target[~changed])
         self._enqueue((key[0] + 1, key[1] + 1), target[changed])
@@ -134,26 +133,6 @@ class Search:
             heappush(self._queue, key)
         self._waiting.setdefault(key, []).append(distinct(words))
 
-    def changed(self, before: Words, after: Words | np.uint64) -> Bits:
+    def changed(self, before: Words, after: Words) -> Bits:
         """Whether an input changes in each move."""
-        return (before ^ after) & self.inputs != 0
-
-    def path(self, key: Key, target: int) -> list[tuple[Key, int]]:
-        """The vertices from a source to `target` in layer `key`, the least predecessor chosen at each step."""
-        back = [(key, target)]
-        while (found := self._before(*back[-1])) is not None:
-            back.append(found)
-        return back[::-1]
-
-    def _before(self, key: Key, target: int) -> tuple[Key, int] | None:
-        rounds, steps = key
-        for before in ((rounds, steps - 1), (rounds - 1, steps - 1)):
-            layer = self.layers.get(before)
-            if layer is None:
-                continue
-            source, reached = self.moves(layer)
-            origin = layer[source[reached == np.uint64(target)]]
-            origin = origin[self.changed(origin, np.uint64(target)) == (before[0] < rounds)]
-            if len(origin):
-                return before, int(origin.min())
-        return None
+        return (before ^ after) & self.packed.input_mask != 0
