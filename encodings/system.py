@@ -54,6 +54,11 @@ class System:
     restraint: Restraint
 
     @cached_property
+    def number(self) -> dict[str, int]:
+        """Position of each variable, from 1."""
+        return {v: i for i, v in enumerate(self.variables, 1)}
+
+    @cached_property
     def base(self) -> tuple[str, ...]:
         """The variables of the circuit and its environment, without those that watch."""
         return (*self.circuit.signals, *map(outstanding, waiting_inputs(self.circuit, self.environment)))
@@ -62,7 +67,7 @@ class System:
     def one_copy(self) -> Mapping[str, May]:
         """`may` over the present and the selectors alone: what speaks of values after the step is spelt out."""
         names = {after(v): self.may[v][1] for v in self.base if self.may[v][0] is not_(self.may[v][1])}
-        watching = {v: tuple(rename(self.may[v], names)) for v in self.variables[len(self.base) :]}
+        watching = {v: tuple(rename(self.may[v], names)) for v in self.watching}
         return {**{v: self.may[v] for v in self.base}, **{v: (zero, one) for v, (zero, one) in watching.items()}}
 
     @cached_property
@@ -74,6 +79,11 @@ class System:
         """The value of a variable after a step, over the present, the selectors and one choice for each free node."""
         zero, one = self.may[name]
         return one if zero is not_(one) else ite(and_(zero, one), var(f"{name} follows"), one)
+
+    @cached_property
+    def watching(self) -> tuple[str, ...]:
+        """The variables beyond those of the circuit and its environment."""
+        return self.variables[len(self.base) :]
 
     @cached_property
     def input_changes(self) -> Expr:

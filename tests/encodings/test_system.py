@@ -12,8 +12,9 @@ from pysat.solvers import Solver
 from random_circuits import random_case
 
 from settled.encodings.clauses import Clauses
-from settled.encodings.moves import Moves, begins
-from settled.encodings.system import Restraint, System, TooManyOrders, outstanding, system
+from settled.encodings.excitation import formulas
+from settled.encodings.moves import begins, moves
+from settled.encodings.system import Restraint, System, TooManyOrders, after, outstanding, system
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import FALSE, TRUE, and_, not_, or_, var
@@ -31,10 +32,10 @@ class Enumerated:
         clauses = Clauses(self.fresh, self.solver.add_clause)
         self.now = [clauses.variable(v) for v in made.variables]
         self.then = [self.fresh() for _ in made.variables]
-        for name, after in zip(made.variables, self.then, strict=True):
+        for name, then in zip(made.variables, self.then, strict=True):
             zero, one = made.may[name]
-            self.solver.add_clause([-after, clauses.literal(one)])
-            self.solver.add_clause([after, clauses.literal(zero)])
+            self.solver.add_clause([-then, clauses.literal(one)])
+            self.solver.add_clause([then, clauses.literal(zero)])
         self.start = clauses.literal(made.start)
 
     def fresh(self) -> int:
@@ -64,8 +65,9 @@ class Formulated:
         self.now = {v: z3.Bool(f"n{i}") for i, v in enumerate(made.variables)}
         self.then = {v: z3.Bool(f"m{i}") for i, v in enumerate(made.variables)}
         self.moves, self.begins = z3.Solver(), z3.Solver()
-        self.moves.add(Moves(made.circuit, made.environment, made.restraint, self.now, self.then).formula())
-        self.begins.add(begins(made.circuit, made.environment, self.now))
+        values = {**self.now, **{after(v): x for v, x in self.then.items()}}
+        self.moves.add(*formulas([moves(made.circuit, made.environment, made.restraint)], values))
+        self.begins.add(*formulas([begins(made.circuit, made.environment)], values))
 
     def starts(self) -> set[Word]:
         return _models(self.begins, list(self.now.values()))
@@ -93,17 +95,17 @@ def meaning(behaviour: Behaviour, state: Word) -> set[Word]:
     """What the executable meaning says a state moves to, and the state itself."""
     low = len(behaviour.circuit.signals)
     at = Situation(state & (1 << low) - 1, state >> low)
-    return {after.state | after.outstanding << low for after in behaviour.moves(at)} | {state}
+    return {then.state | then.outstanding << low for then in behaviour.moves(at)} | {state}
 
 
-def agree(behaviour: Behaviour, starts: Iterable[Word], after: Callable[[Word], set[Word]]) -> int:
+def agree(behaviour: Behaviour, starts: Iterable[Word], steps: Callable[[Word], set[Word]]) -> int:
     """Compare every reachable state's moves; how many there are."""
     expected = {s for s in range(1 << len(behaviour.circuit.signals)) if behaviour.may_start(s)}
     assert set(starts) == expected
     todo, seen = sorted(expected), set(expected)
     while todo:
         state = todo.pop()
-        found = after(state)
+        found = steps(state)
         assert found == meaning(behaviour, state), bin(state)
         todo += found - seen
         seen |= found

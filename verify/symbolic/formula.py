@@ -17,7 +17,7 @@ from settled.verify.limits import Limits
 
 Cube = tuple[int, ...]
 
-SOLVER = "glucose4"
+SOLVER, STEADY_SOLVER = "glucose4", "cadical153"
 CONFLICTS = 2_000
 
 
@@ -78,11 +78,16 @@ class Formula:
 
 
 class Query:
-    """An incremental SAT solver on a formula."""
+    """An incremental SAT solver on a formula.
 
-    def __init__(self, formula: Formula, progress: Progress, clauses: Iterable[Sequence[int]] = ()) -> None:
+    `steady`: many easy questions about clauses that stay; else few about clauses that come all the time.
+    """
+
+    def __init__(
+        self, formula: Formula, progress: Progress, clauses: Iterable[Sequence[int]] = (), steady: bool = False
+    ) -> None:
         self.formula, self.progress = formula, progress
-        self._solver = Solver(name=SOLVER, bootstrap_with=formula.clauses)
+        self._solver = Solver(name=STEADY_SOLVER if steady else SOLVER, bootstrap_with=formula.clauses)
         self._top = formula.count
         self._solver.append_formula([list(c) for c in clauses])
 
@@ -94,6 +99,10 @@ class Query:
     def add(self, clause: Sequence[int]) -> None:
         """Demand a clause from here on."""
         self._solver.add_clause(list(clause))
+
+    def prefer(self, literals: Sequence[int]) -> None:
+        """Values to try first for variables that are free."""
+        self._solver.set_phases(list(literals))
 
     def solve(self, assumptions: Sequence[int]) -> bool:
         """Whether the clauses have a model under assumptions. Raises `LimitReached`."""

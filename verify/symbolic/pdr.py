@@ -13,8 +13,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from heapq import heappop, heappush
 
-from settled.encodings.system import System
-from settled.models.logic import Expr
+from settled.models.logic import Expr, support
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
 
 RETIRED = 1_000
@@ -58,18 +57,16 @@ class Pdr:
     `seeds`: clauses known to be true in every reachable state and inductive together.
     """
 
-    def __init__(self, system: System, bad: Expr, progress: Progress, seeds: Iterable[Cube] = ()) -> None:
-        self.formula = Formula(system)
+    def __init__(self, formula: Formula, bad: Expr, progress: Progress, seeds: Iterable[Cube] = ()) -> None:
+        self.formula = formula
         self.bad = self.formula.literal(bad)
         self.progress, self.seeds = progress, list(seeds)
-        self.start = Query(self.formula, progress, [[self.formula.start]])
+        self.start = Query(self.formula, progress, [[self.formula.start], *self.seeds])
         self.lifting = Query(self.formula, progress)
         self.frames = [Frame(self.start)]
         self._free = self._choices(bad)
 
     def _choices(self, bad: Expr) -> list[int]:
-        from settled.models.logic import support
-
         names = [*self.formula.system.selectors, *support(bad)]
         known = set(self.formula.state)
         return list(dict.fromkeys(v for v in map(self.formula.variable, names) if v not in known))

@@ -7,14 +7,18 @@ from dataclasses import dataclass
 from functools import cached_property
 
 from settled.encodings.system import System, system
-from settled.models.logic import Expr, support
+from settled.models.logic import Expr, or_, support
 from settled.models.states import Run
 from settled.verify.questions import Task
-from settled.verify.symbolic.certificates import Proof
-from settled.verify.symbolic.formula import Formula, Progress, Query
+from settled.verify.symbolic.certificates import Clause, Proof
+from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
+from settled.verify.symbolic.invariants import RINGS, guessed
+from settled.verify.symbolic.local import Local
 from settled.verify.symbolic.pdr import Invariant, Pdr
 
 State = Mapping[str, int]
+
+LARGE = 24
 
 
 @dataclass(frozen=True)
@@ -36,6 +40,14 @@ def without_repeats(words: list[int]) -> tuple[int, ...]:
     return tuple(w for i, w in enumerate(words) if i == 0 or w != words[i - 1])
 
 
+def _named(made: System, literals: Cube) -> Clause:
+    return tuple((made.variables[abs(lit) - 1], lit > 0) for lit in literals)
+
+
+def _numbered(made: System, clause: Clause) -> Cube:
+    return tuple(made.number[v] if bit else -made.number[v] for v, bit in clause)
+
+
 class Reacher:
     """Puts questions about one task to the search."""
 
@@ -49,19 +61,43 @@ class Reacher:
         """The system of the task without observers."""
         return system(self.circuit, self.environment)
 
+    @cached_property
+    def known(self) -> list[Clause]:
+        """Clauses over the circuit's own variables that are true in every reachable state and inductive together."""
+        if len(self.circuit.nodes) < LARGE:
+            return []
+        return [_named(self.base, clause) for clause in guessed(self.base, self.progress)]
+
     def reach(self, made: System, bad: Expr, claim: str) -> Proof | Trail:
         """Decide whether a state with `bad` true can be reached. Raises `LimitReached`.
 
-        `claim`: in words, what a proof says cannot be.
+        `claim`: in words, what a proof says cannot be. Where `bad` has alternatives, those that known clauses near
+        them exclude are left out of the search.
         """
-        search = Pdr(made, bad, self.progress)
-        found = search.run()
-        names = made.variables
+        formula = Formula(made)
+        seeds = [_numbered(made, clause) for clause in self.known]
+        open_ = self._open(formula, bad, seeds)
+        if not open_:
+            return Proof(made, bad, tuple(_named(made, clause) for clause in seeds), claim)
+        found = Pdr(formula, or_(*open_), self.progress, seeds).run()
         if isinstance(found, Invariant):
-            clauses = tuple(tuple((names[abs(lit) - 1], lit > 0) for lit in clause) for clause in found.clauses)
-            return Proof(made, bad, clauses, claim)
-        states = tuple({names[abs(lit) - 1]: int(lit > 0) for lit in state} for state in found.states)
-        return Trail(made, states)
+            return Proof(made, bad, tuple(_named(made, clause) for clause in found.clauses), claim)
+        return Trail(made, tuple({v: int(bit) for v, bit in _named(made, state)} for state in found.states))
+
+    def _open(self, formula: Formula, bad: Expr, seeds: list[Cube]) -> list[Expr]:
+        """The alternatives of `bad` that known clauses near them do not exclude."""
+        alternatives = list(bad.args) if bad.op == "or" else [bad]
+        if not seeds:
+            return alternatives
+        wanted = [formula.literal(e) for e in alternatives]
+        local = Local(formula, seeds)
+        self.progress.at(f"{len(seeds):,} guessed clauses that hold")
+        found = []
+        for e, lit in zip(alternatives, wanted, strict=True):
+            self.progress.tick()
+            if local.refutation([lit], RINGS) is None:
+                found.append(e)
+        return found
 
     def choices(self, made: System, state: State, condition: Expr) -> dict[str, int]:
         """Selectors and other choices in `condition` with which it is true in a state."""

@@ -1,0 +1,104 @@
+"""The reach engine, and each of its rules by itself, against the naive oracle on random circuits."""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Iterator
+from dataclasses import replace
+
+import oracle
+import pytest
+from random_circuits import Question, random_question
+
+from settled.models.states import Behaviour
+from settled.verify.engines import reach
+from settled.verify.limits import Limits
+from settled.verify.properties import kinds
+from settled.verify.questions import Answer, Task
+from settled.verify.replay import replay
+from settled.verify.rules import Established, Failure
+from settled.verify.symbolic import reach as search
+from settled.verify.symbolic.reach import Reacher
+
+RULES = [
+    ("never", "reaches"),
+    ("always", "reaches"),
+    ("deadlock-free", "deadlocks"),
+    ("speed-independent", "withdraws"),
+    ("hazard-free", "observers"),
+    ("settles", "no_loops"),
+    ("settles", "few_changes"),
+    ("settles", "no_loop_goes_round"),
+    ("settles", "no_return"),
+    ("race-free", "no_disabling_ring"),
+    ("race-free", "two_runs"),
+]
+CHECKS = list(dict.fromkeys(check for check, _ in RULES))
+
+
+def some_question(seed: str, check: str, **limits: int) -> Question:
+    """A random question; the nodes of every fifth circuit exclude one another in pairs."""
+    question = random_question(seed, check, **limits)
+    if not seed.endswith(("0", "5")):
+        return question
+    nodes = question.circuit.nodes
+    pairs = tuple(zip(nodes[::2], nodes[1::2], strict=False))
+    return question._replace(circuit=replace(question.circuit, exclusive=pairs))
+
+
+def task_of(question: Question) -> Task:
+    return Task(question.circuit, question.environment, Limits(seconds=120))
+
+
+def complaints(check: str, question: Question, answer: Answer) -> Iterator[str]:
+    """What the oracle has against an answer."""
+    circuit, environment = question.circuit, question.environment
+    expected = oracle.decide(circuit, environment, check, question.options)
+    if answer.verdict != expected.verdict:
+        yield f"{answer.verdict} ({answer.reason}), but the oracle says {expected.verdict}"
+    elif answer.verdict == "proved":
+        if answer.exercised == expected.vacuous:
+            yield f"exercised is {answer.exercised}"
+    else:
+        shown = _shown(check, question, answer)
+        if "some_run_settles" in shown and shown["some_run_settles"] != expected.facts["some_run_settles"]:
+            yield "some_run_settles is wrong"
+
+
+def _shown(check: str, question: Question, answer: Answer) -> dict[str, object]:
+    """The facts of a refutation whose runs have been walked and judged."""
+    kind = kinds()[check]
+    behaviour = Behaviour(question.circuit, question.environment)
+    asked = kind.question(question.circuit, question.options)
+    return {**replay(kind, behaviour, asked, answer)[1], **answer.facts}
+
+
+@pytest.mark.parametrize("guesses", [False, True])
+@pytest.mark.parametrize("check", CHECKS)
+def test_the_engine_decides_as_the_oracle_does(check: str, guesses: bool, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(search, "LARGE", 0 if guesses else 100)
+    verdicts: Counter[str] = Counter()
+    for seed in range(25 if guesses else 120):
+        question = some_question(f"engine {guesses} {seed}", check)
+        answer = reach.answer(task_of(question), kinds()[check].question(question.circuit, question.options))
+        assert not list(complaints(check, question, answer)), seed
+        verdicts[answer.verdict] += 1
+    assert min(verdicts["proved"], verdicts["refuted"]) > 2, verdicts
+
+
+@pytest.mark.parametrize(("check", "name"), RULES)
+def test_a_rule_is_never_wrong(check: str, name: str) -> None:
+    decided: Counter[str] = Counter()
+    for seed in range(1000):
+        question = some_question(f"rule {seed}", check, nodes=4, inputs=2)
+        asked = kinds()[check].question(question.circuit, question.options)
+        (rule,) = [rule for rule in reach.RULES[type(asked)] if rule.__name__ == name]
+        outcome = rule(Reacher(task_of(question)), asked)
+        if outcome is None:
+            continue
+        found = "proved" if isinstance(outcome, Established) else "refuted"
+        assert found == oracle.decide(question.circuit, question.environment, check, question.options).verdict, seed
+        decided[found] += 1
+        if isinstance(outcome, Failure):
+            _shown(check, question, Answer("refuted", name, runs=outcome.runs, facts=outcome.facts))
+    assert decided["proved"] > 100, decided

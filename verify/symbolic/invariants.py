@@ -1,0 +1,232 @@
+"""Guessed local invariants: clauses of up to three literals over near-by signals that random runs never violate, and
+of these the greatest set that is inductive together (Flanagan and Leino 2001, "Houdini"; recalled).
+
+A guess is never believed: what is returned has been shown to hold in all start states and to be kept by every step.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Collection, Hashable, Iterator, Sequence
+from itertools import combinations, product
+
+import numpy as np
+
+from settled.encodings.system import System
+from settled.models.logic import rename, support, var
+from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
+from settled.verify.symbolic.local import Local
+from settled.verify.symbolic.simulation import FULL, Bits, Places, Simulation, Words
+
+NEAR = 10
+SHARED = 400
+WIDTH = 8
+MOMENTS = 16
+LITERALS = 3
+AGAIN = 3
+RINGS = 2
+STEADY = 0.99
+STARTS = 64
+
+Shape = tuple[Hashable, ...]
+
+
+def guessed(made: System, progress: Progress) -> list[Cube]:
+    """Clauses that are true in every reachable state and inductive together. Raises `LimitReached`."""
+    formula = Formula(made)
+    progress.at("random runs")
+    near = neighbourhoods(made)
+    runs = Simulation(made, starts(formula, progress), progress)
+    samples = np.concatenate(runs.explore(_alike(made, near)), axis=1)
+    runs.spread(WIDTH)
+    cubes, apart = unseen(near, samples), 3
+    while cubes:
+        more = runs.sample(MOMENTS, apart)
+        left = _left(cubes, more)
+        samples, apart = np.concatenate([samples, more], axis=1), 2 * apart
+        if len(left) >= STEADY * len(cubes):
+            break
+        cubes = unseen(near, samples)
+    else:
+        return []
+    return _kept(formula, near, samples, left, progress)
+
+
+def _kept(
+    formula: Formula, near: dict[Shape, list[tuple[int, ...]]], samples: Words, cubes: list[Cube], progress: Progress
+) -> list[Cube]:
+    """The clauses that are inductive; where a cube was too large, the cubes of more literals within it are tried."""
+    kept: list[Cube] = []
+    hopeless: set[Cube] = set()
+    for _ in range(AGAIN):
+        found = inductive(formula, cubes, [negated(cube) for cube in kept], progress)
+        kept += found
+        failed = set(cubes) - set(found)
+        hopeless |= failed
+        around = [{abs(lit) - 1 for lit in cube} for cube in failed if len(cube) < LITERALS]
+        close = {s: [p for p in places if any(a.issubset(p) for a in around)] for s, places in near.items()}
+        if not any(close.values()):
+            break
+        cubes = unseen({s: places for s, places in close.items() if places}, samples, hopeless, kept)
+    return [negated(cube) for cube in kept]
+
+
+def starts(formula: Formula, progress: Progress) -> Words:
+    """Up to 64 different start states, a bit for each in the row of each variable."""
+    query = Query(formula, progress, [[formula.start]])
+    rng = np.random.default_rng(1)
+    found: list[list[bool]] = []
+    while len(found) < STARTS and query.solve([]):
+        state = query.model()[: len(formula.state)]
+        found.append([v > 0 for v in state])
+        query.add([-v for v in state])
+        query.prefer([int(v) for v in np.where(rng.random(len(state)) < 0.5, formula.state, -np.array(formula.state))])
+    query.close()
+    rows = np.resize(np.array(found, bool), (STARTS, len(formula.state))).T
+    return np.ascontiguousarray(np.packbits(rows, axis=1)).view(np.uint64)
+
+
+# ---- guesses -------------------------------------------------------------------------------------------------------
+
+
+def neighbourhoods(made: System) -> dict[Shape, list[tuple[int, ...]]]:
+    """For each node the positions of the nearest variables: itself, what it reads, what these read.
+
+    Listed by shape. In large circuits nodes whose surroundings compute the same functions have the same shape, so
+    that what one of them shows speaks against a guess for all; in small ones every node has a shape of its own.
+    """
+    circuit = made.circuit
+    place = {v: i for i, v in enumerate(made.variables)}
+    reads = {n: support(circuit.excitation[n]) for n in circuit.nodes}
+    found: dict[Shape, list[tuple[int, ...]]] = defaultdict(list)
+    for n in circuit.nodes:
+        near = list(dict.fromkeys([n, *reads[n], *(r for m in reads[n] for r in reads.get(m, ()))]))
+        shape: Shape = (n,)
+        if len(circuit.nodes) > SHARED:
+            names = {v: var(f"{i}") for i, v in enumerate(near)}
+            inner = [m for m in (n, *reads[n]) if m in reads]
+            shape = (len(near), *rename([circuit.excitation[m] for m in inner], names))
+        found[shape].append(tuple(place[v] for v in near[:NEAR]))
+    return found
+
+
+def _alike(made: System, near: dict[Shape, list[tuple[int, ...]]]) -> Places:
+    """A number for each variable, the same for nodes of one shape."""
+    found = np.arange(len(made.variables))
+    for places in near.values():
+        for place in places:
+            found[place[0]] = places[0][0]
+    return found
+
+
+def unseen(
+    near: dict[Shape, list[tuple[int, ...]]],
+    samples: Words,
+    hopeless: Collection[Cube] = (),
+    known: Collection[Cube] = (),
+) -> list[Cube]:
+    """Cubes of one to three literals over a neighbourhood that no sample shows, none of them within another.
+
+    `hopeless` cubes are not found; nor are `known` ones and what lies within them.
+    """
+    found: set[Cube] = set()
+    outer = set(known)
+    for size in range(1, LITERALS + 1):
+        sets, groups = _sets(near, size)
+        for cube in _never(sets, groups, samples):
+            within = any(part in outer for k in range(1, size + 1) for part in combinations(cube, k))
+            if not within and cube not in hopeless:
+                found.add(cube)
+                outer.add(cube)
+    return sorted(found)
+
+
+def _sets(near: dict[Shape, list[tuple[int, ...]]], size: int) -> tuple[Places, Places]:
+    """Sets of variables, a row each, and the number of the group of sets that are alike."""
+    rows, numbers, base = [np.zeros((0, size), np.int64)], [np.zeros(0, np.int64)], 0
+    for places in near.values():
+        parts = np.array(list(combinations(range(len(places[0])), size)), np.int64).reshape(-1, size)
+        rows.append(np.array(places, np.int64)[:, parts].reshape(-1, size))
+        numbers.append(np.tile(np.arange(base, base + len(parts)), len(places)))
+        base += len(parts)
+    return np.concatenate(rows), np.concatenate(numbers)
+
+
+def _never(sets: Places, groups: Places, samples: Words) -> Iterator[Cube]:
+    """Cubes over the sets that no sample shows, in no set of the group."""
+    size = sets.shape[1]
+    for signs in product((False, True), repeat=size):
+        shown = np.zeros(int(groups.max(initial=-1)) + 1, bool)
+        np.logical_or.at(shown, groups, _shown(sets, signs, samples))
+        literals = (sets[~shown[groups]] + 1) * np.where(signs, 1, -1)
+        yield from (tuple(sorted(cube, key=abs)) for cube in literals.tolist())
+
+
+def _shown(sets: Places, signs: Sequence[bool], samples: Words) -> Bits:
+    block = max(1, (1 << 20) // samples.shape[1])
+    found = np.zeros(len(sets), bool)
+    for at in range(0, len(sets), block):
+        part = sets[at : at + block]
+        words = np.full((len(part), samples.shape[1]), FULL)
+        for k, sign in enumerate(signs):
+            row = samples[part[:, k]]
+            words &= row if sign else ~row
+        found[at : at + block] = words.any(axis=1)
+    return found
+
+
+def _left(cubes: Sequence[Cube], samples: Words) -> list[Cube]:
+    """The cubes that no sample shows."""
+    found: list[Cube] = []
+    for size in range(1, LITERALS + 1):
+        some = np.array([cube for cube in cubes if len(cube) == size], np.int64).reshape(-1, size)
+        shown = np.zeros(len(some), bool)
+        for signs in product((False, True), repeat=size):
+            alike = np.flatnonzero(((some > 0) == np.array(signs)).all(axis=1))
+            shown[alike] = _shown(np.abs(some[alike]) - 1, signs, samples)
+        found += (tuple(cube) for cube in some[~shown].tolist())
+    return found
+
+
+# ---- what can be kept ----------------------------------------------------------------------------------------------
+
+
+def inductive(formula: Formula, cubes: Sequence[Cube], given: Sequence[Cube], progress: Progress) -> list[Cube]:
+    """Of the cubes a large set that no start state is in and into which no step leads from outside it.
+
+    `given`: clauses that are inductive already. A cube stays while it is refuted by what stands near it, all other
+    cubes that are left being excluded; when one goes, those that were refuted with its help are looked at again.
+    """
+    at_start = Query(formula, progress, [[formula.start]], steady=True)
+    kept = dict.fromkeys(_closed(at_start, cubes))
+    local = Local(formula, [*given, *map(negated, kept)])
+    used_by: dict[Cube, set[Cube]] = defaultdict(set)
+    todo = list(kept)
+    while todo:
+        progress.tick()
+        cube = todo.pop()
+        if cube in kept:
+            used = local.refutation([formula.may[lit] for lit in cube], RINGS)
+            for clause in used or ():
+                used_by[clause].add(cube)
+            if used is None:
+                del kept[cube]
+                local.remove(negated(cube))
+                todo += sorted(used_by.pop(negated(cube), ()))
+    return list(kept)
+
+
+def _closed(query: Query, cubes: Sequence[Cube]) -> list[Cube]:
+    """The cubes that no model is in; a model speaks against every cube that it is in."""
+    broken = np.zeros(len(cubes), bool)
+    for i, cube in enumerate(cubes):
+        if not broken[i] and query.solve(cube):
+            model = set(query.model())
+            broken[[k for k in range(i, len(cubes)) if model.issuperset(cubes[k])]] = True
+    query.close()
+    return [cube for cube, gone in zip(cubes, broken, strict=True) if not gone]
+
+
+def negated(cube: Cube) -> Cube:
+    """The clause that excludes a cube, and the other way round."""
+    return tuple(-lit for lit in cube)
