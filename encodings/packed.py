@@ -79,6 +79,10 @@ class Packed:
         """The packed set of excited nodes of each vertex."""
         return self.mask(self.values(self._excited, vertices), vertices, self.inputs)
 
+    def movers(self, vertices: Words) -> Words:
+        """The packed set of nodes that may switch in each vertex."""
+        return self.excited(vertices)
+
     def admits(self, vertices: Words) -> Bits:
         """Whether the input vector of each vertex satisfies the assumptions."""
         return self._all(self._assume, vertices)
@@ -113,7 +117,7 @@ class Packed:
         return result
 
     def steps(self, vertices: Words, movers: Words) -> tuple[Places, Words]:
-        """Every step that is not the environment's own choice of a change; `movers` is `excited(vertices)`."""
+        """Every step that is not the environment's own choice of a change; `movers` is `movers(vertices)`."""
         if not self.fundamental:
             source, target = self.held(vertices, movers | self.allowed(vertices))
             lawful = self.admits(target)

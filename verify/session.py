@@ -25,6 +25,7 @@ from settled.verify.properties import Kind, kinds, shapes, standard
 from settled.verify.questions import Answer, Question, Task
 from settled.verify.replay import replay
 from settled.verify.result import FileReport, Result, trace
+from settled.verify.shorten import shortened
 from settled.verify.side_by_side import decide
 from settled.verify.understood import beside, understood
 
@@ -86,6 +87,7 @@ class Session:
         answer = self.ask(self.circuit, question)
         claim, facts = kind.claim(self.circuit, options), dict(answer.facts)
         if answer.verdict == "refuted":
+            answer = shortened(self._task(self.circuit), question, answer)
             behaviour = Behaviour(self.circuit, self.specification.environment)
             claim, facts = replay(kind, behaviour, question, answer)
             facts |= {k: v for k, v in answer.facts.items() if k in ("some_run_settles", "vector")}
@@ -109,10 +111,12 @@ class Session:
 
     def ask(self, circuit: Circuit, question: Question) -> Answer:
         """The first decision that an engine comes to; else why the last one came to none."""
+        return decide(self._task(circuit), question, self.settings.jobs)
+
+    def _task(self, circuit: Circuit) -> Task:
         s = self.settings
         limits = Limits(s.seconds, s.states, s.megabytes, s.report)
-        task = Task(circuit, self.specification.environment, limits, self._memory.setdefault(circuit.winners, {}))
-        return decide(task, question, s.jobs)
+        return Task(circuit, self.specification.environment, limits, self._memory.setdefault(circuit.winners, {}))
 
     def _compare_winners(self, kind: Kind, question: Question) -> dict[str, bool]:
         if not kind.compares_winners or self.circuit.winners == "one":

@@ -177,7 +177,7 @@ def essential_hazards(circuit: Subject, inputs: list[str]) -> set[tuple[str, str
     three = ThreeChanges(graph_of(session))
     bits = {1 << session.circuit.place[x]: x for x in inputs}
     words = three.graph.vertices
-    found = {(circuit.notation(session, int(words[s])), bits[b]) for s, b in three.after if three.clash(s, b)}
+    found = {(circuit.notation(session, int(words[s])), bits[b]) for b in bits for s in three.clashing(b).owner}
     (result,) = circuit.check({}, {"check": "essential-hazard-free"})
     assert result.verdict == ("refuted" if found else "proved")
     return found

@@ -141,7 +141,7 @@ def oscillates(task: Task, _: Oscillates) -> Answer:
     if found is None:
         return proved(graph, bool(len(graph.change_edges.source) or len(graph.step_edges.source)))
     path, loop = found
-    facts = {"some_run_settles": not len(graph.restless)}
+    facts = {} if graph.unfinished else {"some_run_settles": not len(graph.restless)}
     return refuted(graph, [run(graph, "once round the oscillation", path, loop)], facts)
 
 

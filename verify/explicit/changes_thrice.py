@@ -40,7 +40,7 @@ class ThreeChanges:
         """The least two runs, over all stable vertices and inputs, that end in different internal states, or None."""
         bits, pairs = [np.zeros(0, np.int64)], [self._none]
         for bit in (1 << i for i in range(self.packed.inputs)):
-            pairs.append(self._clashing(bit))
+            pairs.append(self.clashing(bit))
             bits.append(np.full(len(pairs[-1]) // 2, bit))
         which, two = np.concatenate(bits), joined(*pairs)
         if not len(which):
@@ -58,7 +58,7 @@ class ThreeChanges:
     def _none(self) -> Entries:
         return Entries(*(np.zeros(0, np.int64) for _ in range(4)))
 
-    def _clashing(self, bit: int) -> Entries:
+    def clashing(self, bit: int) -> Entries:
         """For one input the stable vertices with two outcomes, each as the owner of two rows.
 
         The changes count among the steps, and once more as `LONG`.

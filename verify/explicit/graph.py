@@ -24,13 +24,14 @@ class Graph:
     """All reachable vertices of a circuit in its environment (see `Packed` for what a vertex is).
 
     `vertices` is sorted; `excited`, `key` (round, steps) and `end` (stable, nothing outstanding) run beside it.
-    `sources`: where runs begin (default: the start states). When a limit ended the search, `unfinished` says which;
-    the vertices found are reachable all the same, so that whatever is found wrong among them is wrong.
+    `sources`: where runs begin (default: the start states); `most`: how many input changes deep the search goes. When
+    a limit ended the search, `unfinished` says which; the vertices found are reachable all the same, so that whatever
+    is found wrong among them is wrong.
     """
 
-    def __init__(self, packed: Packed, limits: Limits, sources: Words | None = None) -> None:
+    def __init__(self, packed: Packed, limits: Limits, sources: Words | None = None, most: int | None = None) -> None:
         self.packed, self.limits = packed, limits
-        self.search = Search(packed, packed.bits, self.moves, limits)
+        self.search = Search(packed, packed.bits, self.moves, limits, most=most)
         self.search.begin(starts(packed, limits) if sources is None else sources)
         self.explore(limits)
 
@@ -45,6 +46,8 @@ class Graph:
             self.search.run()
         except LimitReached as reached:
             self.unfinished = str(reached)
+        if self.search.cut and self.unfinished is None:
+            self.unfinished = f"no run with more than {self.search.most} input changes was looked at"
         self._sort()
 
     def _sort(self) -> None:
@@ -114,14 +117,14 @@ class Graph:
 
     def steps(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the response (in input-output mode: every step)."""
-        movers = self.packed.excited(vertices)
+        movers = self.packed.movers(vertices)
         if not self.packed.fundamental:
             movers = movers | self.packed.allowed(vertices)
         return self._blockwise(self.packed.steps, vertices, movers)
 
     def held(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the nodes alone, the inputs held."""
-        return self._blockwise(self.packed.held, vertices, self.packed.excited(vertices))
+        return self._blockwise(self.packed.held, vertices, self.packed.movers(vertices))
 
     def changes(self, vertices: Words) -> tuple[Places, Words]:
         """Changes that the environment may make in the vertices among `vertices` that admit one."""

@@ -81,7 +81,8 @@ class Search:
 
     `bits`: how many a word has, with its marks. After `run`, `layers` holds the words by key (input changes, steps),
     least first, and `hit` those of the first layer that are flagged, with its key, or None. A search that a limit
-    ended goes on where it was when `run` is called again.
+    ended goes on where it was when `run` is called again. `most`: how many input changes deep it goes; `cut` says that
+    there was more.
     """
 
     packed: Packed
@@ -92,11 +93,18 @@ class Search:
     layers: dict[Key, Words] = field(default_factory=dict)
     hit: tuple[Key, Words] | None = None
     size: int = 0
+    most: int | None = None
+    cut: bool = False
 
     def __post_init__(self) -> None:
         self._known = Known(self.bits)
         self._waiting: dict[Key, list[Words]] = {}
         self._queue: list[Key] = []
+
+    @property
+    def done(self) -> bool:
+        """Whether nothing is left to explore, as deep as it goes."""
+        return not self._queue
 
     def begin(self, sources: Words) -> Search:
         """Put in words to explore from."""
@@ -128,6 +136,9 @@ class Search:
 
     def _enqueue(self, key: Key, words: Words) -> None:
         if not len(words):
+            return
+        if self.most is not None and key[0] > self.most:
+            self.cut = True
             return
         if key not in self._waiting:
             heappush(self._queue, key)
