@@ -66,7 +66,11 @@ CASES = {
         ["check"],
         3,
     ),
-    "level_latch_limit": (LEVEL, ["check", "--states", "5", "--only", "race-free"], 3),
+    "level_latch_limit": (
+        LEVEL + '[[property]]\ncheck = "essential-hazard-free"\n',
+        ["check", "--states", "5", "--only", "essential-hazard-free"],
+        3,
+    ),
 }
 
 

@@ -38,13 +38,14 @@ z = "~z"
 check = "stable-states"
 """
 UNMOVED = LATCH + "[environment.inputs]\ns = { rises = '0', falls = '0' }\nr = { rises = '0', falls = '0' }\n"
+ESSENTIAL = LATCH.replace('"settles"', '"essential-hazard-free"').replace('"race-free"', '"stable-states"')
 BAD = LATCH.replace("~r & q", "~rr & q").replace('"settles"', '"settle"')
 
 
 @pytest.fixture
 def files(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     monkeypatch.chdir(tmp_path)
-    for name, text in {"latch": LATCH, "ring": RING, "unmoved": UNMOVED, "bad": BAD}.items():
+    for name, text in {"latch": LATCH, "ring": RING, "unmoved": UNMOVED, "essential": ESSENTIAL, "bad": BAD}.items():
         Path(f"{name}.toml").write_text(text)
     return tmp_path
 
@@ -62,7 +63,7 @@ def run(*arguments: str, stdin: str = "") -> Result:
         (["unmoved.toml"], 3),
         (["unmoved.toml", "--allow-vacuous"], 0),
         (["unmoved.toml", "ring.toml"], 1),
-        (["latch.toml", "--states", "1"], 3),
+        (["essential.toml", "--states", "1"], 3),
         (["bad.toml"], 2),
         (["bad.toml", "ring.toml"], 2),
         (["missing.toml"], 2),

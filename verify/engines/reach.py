@@ -63,4 +63,4 @@ def _exercise(reacher: Reacher, question: Question) -> Expr | None:
     return None
 
 
-ENGINE = Engine(NAME, rank=30, answers=dict.fromkeys(RULES, answer))
+ENGINE = Engine(NAME, rank=30, answers=dict.fromkeys(RULES, answer), apart=True)

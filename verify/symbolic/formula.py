@@ -31,15 +31,11 @@ class Progress:
     def at(self, where: str) -> None:
         """Say where the work is."""
         self.where = where
-        if self.limits.report is not None:
-            self.limits.report(where)
+        self.tick()
 
     def tick(self) -> None:
-        """Raises `LimitReached` beyond the time limit."""
-        if self.limits.spent() > self.limits.seconds:
-            self.limits.refuse(
-                f"time limit of {self.limits.seconds:g} s reached at {self.where}; raise it with --seconds N"
-            )
+        """Raises `LimitReached` beyond a limit."""
+        self.limits.check(f"at {self.where}")
 
 
 class Formula:
