@@ -146,6 +146,7 @@ class Answer:
     * `ranged`: counts of what was covered (`total_states`, `stable_states`, `input_changes`), where counted.
     * `exercised`: False when there was nothing to range over.
     * `facts`: more about the failure, as in the result document.
+    * `scripts`: SMT-LIB 2.6 scripts by name; a proof stands when any SMT solver answers `unsat` to each.
     """
 
     verdict: str
@@ -156,6 +157,7 @@ class Answer:
     exercised: bool = True
     facts: Mapping[str, Any] = field(default_factory=dict)
     certificate: Mapping[str, Any] | None = None
+    scripts: Mapping[str, str] = field(default_factory=dict)
 
 
 @dataclass

@@ -52,6 +52,7 @@ class Result:
     ranged: Mapping[str, int] = field(default_factory=dict)
     facts: Mapping[str, Any] = field(default_factory=dict)
     certificate: Mapping[str, Any] | None = None
+    scripts: Mapping[str, str] = field(default_factory=dict)
     question: Question | None = None
 
 

@@ -106,6 +106,7 @@ class Session:
             ranged=answer.ranged,
             facts=facts,
             certificate=answer.certificate,
+            scripts=answer.scripts,
             question=question,
         )
 

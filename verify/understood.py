@@ -58,7 +58,10 @@ def beside(circuit: Circuit) -> tuple[tuple[str, str], ...]:
     )
 
 
-def _names(names: Sequence[str], most: int = 24) -> str:
+MOST = 24
+
+
+def _names(names: Sequence[str], most: int = MOST) -> str:
     if len(names) <= most:
         return ", ".join(names) or "none"
     return f"{', '.join(names[: most - 2])}, ... ({len(names)} in all)"
@@ -85,6 +88,7 @@ def _guard(name: str, guard: Guard) -> str:
 
 
 def _start(environment: Environment) -> str:
-    values = " ".join(f"{s}={int(v)}" for s, v in environment.start.items())
+    values = [f"{s}={int(v)}" for s, v in environment.start.items()]
     sort = "stable total state" if environment.mode == "fundamental" else "total state"
-    return f"every {sort}{f' with {values}' if values else ''} that the assumptions admit"
+    given = " ".join(values) if len(values) <= MOST else _names(values)
+    return f"every {sort}{f' with {given}' if values else ''} that the assumptions admit"

@@ -9,7 +9,7 @@ from settled.models.logic import Expr, and_, not_, or_
 from settled.verify.engines import Engine
 from settled.verify.questions import Answer, Diverges, Flickers, Oscillates, Question, Reaches, Task, undecided
 from settled.verify.rules import Established, Rule, hazards, races, settling, states
-from settled.verify.symbolic.certificates import Proof, check
+from settled.verify.symbolic.certificates import Proof, check, scripts
 from settled.verify.symbolic.reach import Reacher
 
 NAME = "property-directed reachability"
@@ -39,8 +39,11 @@ def _proved(reacher: Reacher, question: Question, found: Established) -> Answer:
         "rule": found.rule,
         "parts": [proof.as_data() for proof in found.proofs],
     }
+    written = {
+        f"{number}-{name}": text for number, proof in enumerate(found.proofs, 1) for name, text in scripts(proof)
+    }
     exercised = _exercised(reacher, question)
-    return Answer("proved", NAME, exercised=exercised, certificate=certificate)
+    return Answer("proved", NAME, exercised=exercised, certificate=certificate, scripts=written)
 
 
 def _exercised(reacher: Reacher, question: Question) -> bool:
