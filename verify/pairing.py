@@ -94,7 +94,7 @@ def _respond(behaviour: Behaviour, at: Doing) -> set[Doing]:
     return after
 
 
-def ends_one_by_one(behaviour: Behaviour, state: int, schedule: Schedule, most: int = 5_000) -> set[int] | None:
+def ends_one_by_one(behaviour: Behaviour, state: int, schedule: Schedule, most: int) -> set[int] | None:
     """The stable total states in which the response to a change can end, by the executable meaning alone.
 
     None when the response has more than `most` total states.

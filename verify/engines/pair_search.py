@@ -27,7 +27,9 @@ from settled.verify.pairing import (
 from settled.verify.questions import Answer, Differs, Task
 
 NAME = "exhaustive search over pairs of stable states"
-SAMPLE = 200
+SAMPLE, AUDITED = 200, 200
+"""Pairs, and total states of one response, that are looked at once more by the executable meaning."""
+
 LISTED = 10_000
 
 
@@ -97,7 +99,7 @@ def _audit(task: Task, question: Differs, relation: Sequence[Pair]) -> None:
         if value(task.circuit, signals[0], a) != value(question.other, signals[1], b):
             raise AuditFailed(f"the outputs of the pair {a:#x}, {b:#x} differ")
         for schedule in lawful(a & task.circuit.input_mask, left.allowed(a)):
-            ends = [ends_one_by_one(left, a, schedule), ends_one_by_one(right, b, schedule)]
+            ends = [ends_one_by_one(left, a, schedule, AUDITED), ends_one_by_one(right, b, schedule, AUDITED)]
             if any((p, q) not in known for p in ends[0] or () for q in ends[1] or ()):
                 raise AuditFailed(f"a change leads from the pair {a:#x}, {b:#x} out of the relation")
 

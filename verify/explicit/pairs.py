@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from typing import NamedTuple, Protocol
 
 from settled.models.circuit import Circuit
-from settled.verify.explicit.replies import Replies, Reply
+from settled.verify.explicit.replies import Reply
 from settled.verify.limits import Limits
 from settled.verify.pairing import Schedule, by_vector
 
@@ -94,7 +94,7 @@ class Found:
 class PairSearch:
     """All pairs that are reachable from pairs of start states, layer by layer; each layer is one change more."""
 
-    def __init__(self, original: Original, other: Replies, limits: Limits, transients: bool = False) -> None:
+    def __init__(self, original: Original, other: Facing, limits: Limits, transients: bool = False) -> None:
         self.original, self.other, self.limits, self.transients = original, other, limits, transients
         self.faults: dict[Pair, Fault] = {}
         self.seen: set[Pair] = set()

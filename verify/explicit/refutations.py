@@ -6,6 +6,7 @@ from typing import Any
 
 from settled.models.states import Run
 from settled.verify.explicit.pairs import Facing, Found, Pair, PairSearch
+from settled.verify.explicit.replies import Replies
 from settled.verify.pairing import Schedule
 
 WAYS = 32
@@ -75,8 +76,8 @@ class Refutation:
                 states, loop = side.lasso(pair[i], schedule)
                 self.loops[i] = len(self.paths[i]) - 1 + loop
             elif what == "hazard" and i == 1:
-                hazards = self.search.new_hazards(pair, schedule)
-                states, signal, step = self.search.other.flicker(pair[i], schedule, hazards)
+                assert isinstance(side, Replies), "only full responses show transients"
+                states, signal, step = side.flicker(pair[i], schedule, self.search.new_hazards(pair, schedule))
                 self.facts |= {"signal": signal, "offending_step": len(self.paths[i]) - 1 + step}
             else:
                 states = min([side.run_to(pair[i], schedule, end) for end in ends], key=len)

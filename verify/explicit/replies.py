@@ -184,6 +184,7 @@ class Replies:
         self._program = Program(circuit.resolve(*map(circuit.signal, signals)))
         self._known: dict[tuple[int, Schedule], Reply] = {}
         self._values: dict[int, int] = {}
+        self._explored = 0
 
     def prepare(self, changes: Iterable[tuple[int, Schedule]]) -> None:
         """Find the replies to changes (a stable total state and what changes in it) that are not known yet."""
@@ -193,6 +194,8 @@ class Replies:
             return
         words = [self.packed.word(state, Agenda(rest)) for state, rest in fresh]
         graph = Responses(self.packed, self.limits, words, self._serial)
+        self._explored += len(graph)
+        self.limits.tick(self._explored, 0)
         nothing = np.zeros_like(graph.vertices)
         once, twice = graph.flickers(Watch(graph, self.signals)) if self.flickers else (nothing, nothing)
         for key, v in zip(fresh, graph.index(np.array(words, np.uint64)).tolist(), strict=True):
