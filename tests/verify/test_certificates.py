@@ -87,7 +87,7 @@ def test_an_invariant_that_a_move_leaves_is_refused() -> None:
 
 
 def test_no_time_left_for_the_check_is_a_limit_and_no_verdict() -> None:
-    with pytest.raises(LimitReached, match="while z3 checked"):
+    with pytest.raises(LimitReached, match="while z3 checks"):
         check(proof_of(), Limits(seconds=-1))
 
 
