@@ -6,6 +6,8 @@ has two ends, so both are asked of it; a circuit whose races leave its outputs o
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from settled.models.circuit import Circuit
 from settled.models.logic import Expr, or_, xor
 from settled.verify.engines import Engine, decide
@@ -29,8 +31,9 @@ def differs(task: Task, question: Differs) -> Answer:
         return undecided(f"`{name}` is not the same function in both circuits", NAME)
     found = undecided("", NAME)
     needed: tuple[Question, ...] = (Oscillates(), Diverges())
+    half = replace(task, limits=replace(task.limits, seconds=task.limits.spent() + task.limits.left() / 2))
     for asked in needed:
-        found = decide(task, asked)
+        found = decide(half, asked)
         if found.verdict != "proved":
             return undecided("the circuit does not settle, or an input change of it has several ends", NAME)
     recheck(task, unlike)

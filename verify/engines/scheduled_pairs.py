@@ -25,8 +25,11 @@ from settled.verify.stable_states import start_states
 
 NAME = "search over pairs of stable states by one run of each response"
 STARTS = 5_000
-TURNS = (2.0, 10.0)
-"""Seconds that each engine gets in the first rounds of a question about one circuit alone."""
+TURN = 10.0
+"""Seconds that each engine gets in the first round of a question about one circuit alone."""
+
+MIDDLE = range(20, 60)
+"""Numbers of nodes for which decision diagrams are likely to decide first, and an exhaustive search last."""
 
 
 def differs(task: Task, question: Differs) -> Answer:
@@ -77,14 +80,21 @@ def open_outcomes(task: Task, circuit: Circuit, environment: Environment) -> str
 
 
 def is_proved(task: Task, circuit: Circuit, environment: Environment, question: Question) -> bool:
-    """Whether some engine proves it: all have a short turn each, then a longer one, then what time is left."""
-    for seconds in (*TURNS, task.limits.left()):
-        for engine in able(question):
+    """Whether some engine proves it: all have a short turn each, then what time is left."""
+    for seconds in (TURN, task.limits.left()):
+        for engine in in_order(circuit, question):
             turn = replace(task.limits, seconds=min(task.limits.seconds, task.limits.spent() + seconds))
             answer = attempt(engine, Task(circuit, environment, turn), question)
             if answer.verdict != "undecided":
                 return answer.verdict == "proved"
     return False
+
+
+def in_order(circuit: Circuit, question: Question) -> list[Engine]:
+    """The engines that answer, the likeliest to decide first."""
+    quick = [e for e in able(question) if e.rank < ENGINE.rank]
+    rest = [e for e in able(question) if e.rank > ENGINE.rank]
+    return quick + (rest[::-1] if len(circuit.nodes) in MIDDLE else rest)
 
 
 ENGINE = Engine(NAME, rank=8, answers={Differs: differs}, apart=True)
