@@ -76,6 +76,7 @@ Seconds = Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Ti
 States = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")]
 Memory = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of memory for a process, in megabytes.")]
 Jobs = Annotated[int, typer.Option(metavar="N", min=1, help="How many engines may work side by side.")]
+Every = Annotated[bool, typer.Option("--all", help="Show every cause of a race or hazard, not only the shortest run.")]
 Allow = Annotated[bool, typer.Option("--allow-vacuous", help="Let a vacuous proof count as any other.")]
 _CIRCUIT = "A netlist, or a file with a [circuit] table; `-` and gallery names as for `check`."
 Original = Annotated[str, typer.Argument(metavar="ORIGINAL", show_default=False, help=_CIRCUIT)]
@@ -95,6 +96,7 @@ def check(
     json: Json = False,
     out: Out = None,
     only: Only = None,
+    every: Every = False,
     seconds: Seconds = 60.0,
     states: States = 4_000_000,
     memory: Memory = 8_000,
@@ -110,7 +112,7 @@ def check(
     from settled.verify.terminal import Screen
 
     screen = Screen(silent=json)
-    settings = Settings(tuple(only or ()), seconds, states, memory, jobs, screen.progress)
+    settings = Settings(tuple(only or ()), seconds, states, memory, jobs, screen.progress, every)
     outcome = Outcome()
     for name in files:
         if outcome.interrupted:

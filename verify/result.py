@@ -38,7 +38,10 @@ class Trace:
 
 @dataclass(frozen=True)
 class Result:
-    """The verdict on one property, with all that it rests on. `question`: what the engine was asked."""
+    """The verdict on one property, with all that it rests on.
+
+    `further`: the runs of further causes, after those in `traces`; `question`: what the engine was asked.
+    """
 
     name: str
     check: str
@@ -48,6 +51,7 @@ class Result:
     seconds: float
     reason: str | None = None
     traces: tuple[Trace, ...] = ()
+    further: tuple[Trace, ...] = ()
     vacuous: bool = False
     ranged: Mapping[str, int] = field(default_factory=dict)
     facts: Mapping[str, Any] = field(default_factory=dict)
@@ -132,7 +136,7 @@ def _result(r: Result) -> dict[str, Any]:
             ],
             "loop": t.loop,
         }
-        for t in r.traces
+        for t in (*r.traces, *r.further)
     ]
     return {
         "name": r.name,

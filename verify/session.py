@@ -17,14 +17,16 @@ from settled.models.logic import Expr, support, topological
 from settled.models.problems import InputError, Problem, nearest
 from settled.models.property_files.reader import read, read_circuit
 from settled.models.specification import Property, Specification
-from settled.models.states import Behaviour
+from settled.models.states import Behaviour, Run
 from settled.models.text_file import recording
+from settled.verify.causes import explain
+from settled.verify.causes.every import every_cause, grouped
 from settled.verify.limits import Limits
 from settled.verify.placing import placed
 from settled.verify.properties import Kind, kinds, shapes, standard
 from settled.verify.questions import Answer, Question, Task
 from settled.verify.replay import replay
-from settled.verify.result import FileReport, Result, trace
+from settled.verify.result import FileReport, Result, Trace, trace
 from settled.verify.shorten import shortened
 from settled.verify.side_by_side import decide
 from settled.verify.understood import beside, understood
@@ -34,7 +36,10 @@ WITHOUT_START = ("stable-states", "initialises")
 
 @dataclass
 class Settings:
-    """What the user asked beside the files: names of properties, limits for one property, processes, a listener."""
+    """What the user asked beside the files: names of properties, limits for one property, processes, a listener.
+
+    `every`: of a race or hazard not only the least run is wanted, but every cause.
+    """
 
     only: Sequence[str] = ()
     seconds: float = 60.0
@@ -42,6 +47,7 @@ class Settings:
     megabytes: int = 8_000
     jobs: int = 2
     report: Callable[[str], None] | None = None
+    every: bool = False
 
 
 @dataclass
@@ -86,13 +92,17 @@ class Session:
         question = self._questions[prop.name]
         answer = self.ask(self.circuit, question)
         claim, facts = kind.claim(self.circuit, options), dict(answer.facts)
+        further: Sequence[Run] = ()
         if answer.verdict == "refuted":
             answer = shortened(self._task(self.circuit), question, answer)
-            behaviour = Behaviour(self.circuit, self.specification.environment)
-            claim, facts = replay(kind, behaviour, question, answer)
+            answer, claim, facts, further = self._explained(kind, question, answer)
             facts |= {k: v for k, v in answer.facts.items() if k in ("some_run_settles", "vector")}
             facts |= self._compare_winners(kind, question)
         known = {circuit.name: circuit for circuit in (*question.circuits, self.circuit)}
+
+        def traces(runs: Sequence[Run]) -> tuple[Trace, ...]:
+            return tuple(trace(c, run, _named(c, options)) for run in runs for c in [known[run.circuit]])
+
         return Result(
             name=prop.name,
             check=prop.check,
@@ -101,7 +111,8 @@ class Session:
             method=answer.method,
             seconds=time.perf_counter() - began,
             reason=answer.reason,
-            traces=tuple(trace(c, run, _named(c, options)) for run in answer.runs for c in [known[run.circuit]]),
+            traces=traces(answer.runs),
+            further=traces(further),
             vacuous=answer.verdict == "proved" and not answer.exercised,
             ranged=answer.ranged,
             facts=facts,
@@ -109,6 +120,22 @@ class Session:
             scripts=answer.scripts,
             question=question,
         )
+
+    def _explained(
+        self, kind: Kind, question: Question, answer: Answer
+    ) -> tuple[Answer, str, dict[str, Any], Sequence[Run]]:
+        """A refutation walked again: answer, claim and facts, the cause among them; the runs of further causes."""
+        behaviour = Behaviour(self.circuit, self.specification.environment)
+        causes = every_cause(self._task(self.circuit), question) if self.settings.every else None
+        if causes and causes.found:
+            first = causes.found[0].answer
+            answer = replace(answer, runs=first.runs, facts={**answer.facts, **first.facts})
+        claim, facts = replay(kind, behaviour, question, answer)
+        facts |= explain(behaviour, question, answer.runs, facts)
+        if causes is None:
+            return answer, claim, facts, ()
+        runs, listed = grouped(kind, behaviour, question, causes)
+        return answer, claim, facts | {"causes": listed, "causes_reason": causes.reason}, runs[len(answer.runs) :]
 
     def ask(self, circuit: Circuit, question: Question) -> Answer:
         """The first decision that an engine comes to; else why the last one came to none."""

@@ -135,7 +135,7 @@ def test_names_of_any_kind_compile(tmp_path: Path) -> None:
     [
         ("level_latch/race-free.v", "circuit_2 run_2", "circuit_1 run_2"),
         ("clock_switch_plain/hazard-free.v", "assign #1 gb", "assign #9 gb"),
-        ("sluice_interlock_buttons/never-both-main-contacts.v", "assign #3 ml", "assign #1 ml"),
+        ("sluice_interlock_buttons/never-both-main-contacts.v", "assign #4 kl", "assign #1 kl"),
         ("float_chatter/settles.v", "~coil", "1'b1"),
     ],
 )

@@ -19,7 +19,7 @@ from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.hazards import Watch, flickering, least_flicker, rest_of_response
 from settled.verify.explicit.oscillations import least_oscillation
 from settled.verify.explicit.progress import changeable, dead_ends, least_evasion
-from settled.verify.explicit.races import Races
+from settled.verify.explicit.races import Pair, Races
 from settled.verify.explicit.withdrawals import least_withdrawal
 from settled.verify.limits import LimitReached
 from settled.verify.questions import (
@@ -151,8 +151,13 @@ def diverges(task: Task, _: Diverges) -> Answer:
     found = Races(graph).least()
     if found is None:
         return proved(graph, len(graph.change_edges.source) > 0)
+    return refuted(graph, race_runs(graph, found))
+
+
+def race_runs(graph: Graph, paths: Pair) -> list[Run]:
+    """The runs of a critical race."""
     titles = ("one ordering", "another ordering")
-    return refuted(graph, [run(graph, title, path) for title, path in zip(titles, found, strict=True)])
+    return [run(graph, title, path) for title, path in zip(titles, paths, strict=True)]
 
 
 def flickers(task: Task, question: Flickers) -> Answer:
@@ -164,8 +169,12 @@ def flickers(task: Task, question: Flickers) -> Answer:
         return proved(graph, len(graph.change_edges.source) > 0)
     found = least_flicker(graph, watch, bad)
     assert found is not None, "a signal that flickers has a run that shows it"
-    path, signal = found
-    shown = run(graph, "the run through the hazard", path + rest_of_response(graph, path[-1]))
+    return run_with_hazard(graph, *found)
+
+
+def run_with_hazard(graph: Graph, path: Sequence[int], signal: str) -> Answer:
+    """The answer that shows a hazard, from the run up to the second change of the signal."""
+    shown = run(graph, "the run through the hazard", [*path, *rest_of_response(graph, path[-1])])
     return refuted(graph, [shown], {"signal": signal, "offending_step": len(path) - 1})
 
 
@@ -222,4 +231,3 @@ ENGINE = Engine(
         Evades: evades,
     },
 )
-

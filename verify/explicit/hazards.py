@@ -12,7 +12,7 @@ from settled.encodings.packed import Bits, Places, Words
 from settled.models.logic import Program
 from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.normal_form import least_run
-from settled.verify.explicit.search import Search
+from settled.verify.explicit.search import Key, Search
 
 ONE = np.uint64(1)
 
@@ -57,14 +57,60 @@ def flickering(graph: Graph, watch: Watch) -> int:
 
 def least_flicker(graph: Graph, watch: Watch, bad: int) -> tuple[list[int], str] | None:
     """The least run (as vertices) up to the second change of one of the signals in the packed set `bad`."""
-    tagged = Tagged(graph, watch, [i for i in range(len(watch.signals)) if bad >> i & 1])
-    limits = graph.limits_for(1 + 2 * bad.bit_count())
-    search = Search(graph.packed, tagged.bits, tagged.moves, limits, tagged.flagged)
+    tagged = Tagged(graph, watch, bad)
+    search = Search(graph.packed, tagged.bits, tagged.moves, graph.limits_for(tagged.copies), tagged.flagged)
     hit = search.begin(graph.starts).run().hit
     if hit is None:
         return None
     run = least_run(search, dict([hit]))
-    return tagged.plain(run), tagged.signal(run[-1])
+    return tagged.plain(run), watch.signals[tagged.signal(run[-1])]
+
+
+def least_flickers(graph: Graph, watch: Watch, source: int, targets: Words, bad: int) -> dict[str, list[int]]:
+    """For each signal in the packed set `bad` the least way on from a stable vertex to its second change, if any.
+
+    `targets`: the vertices right after the change that is meant.
+    """
+    tagged = Tagged(graph, watch, bad)
+    before = np.full(len(targets), source, np.uint64)
+
+    def moves(words: Words) -> tuple[Places, Words]:
+        begin = np.flatnonzero(words == np.uint64(source))
+        _, first = tagged.followed(before, targets)
+        followed, target = tagged.steps(words)
+        return (
+            np.concatenate([np.repeat(begin, len(first)), followed]),
+            np.concatenate([np.tile(first, len(begin)), target]),
+        )
+
+    search = Search(graph.packed, tagged.bits, moves, graph.limits_for(tagged.copies))
+    search.begin(np.array([source], np.uint64)).run()
+    found: dict[int, tuple[Key, Words]] = {}
+    for key, words in search.layers.items():
+        back = words[tagged.flagged(words)]
+        for number in {tagged.signal(word) for word in back.tolist()} - set(found):
+            found[number] = key, back[tagged.numbers(back) == number]
+    return {watch.signals[i]: tagged.plain(least_run(search, dict([found[i]]))) for i in sorted(found)}
+
+
+def still_changing(graph: Graph, watch: Watch) -> tuple[Words, Words]:
+    """For each vertex the watched signals that can change at least once, at least twice, in what follows there."""
+    value, edges = watch(graph.vertices), graph.step_edges
+    moved = value[edges.source] ^ value[edges.target]
+    once = _spread_back(graph, moved)
+    return once, _spread_back(graph, moved & once[edges.target])
+
+
+def _spread_back(graph: Graph, seen: Words) -> Words:
+    """What is seen on some edge of a run from each vertex."""
+    edges = graph.step_edges
+    here = np.zeros(len(graph), np.uint64)
+    while True:
+        after = here.copy()
+        np.bitwise_or.at(after, edges.source, seen | here[edges.target])
+        if (after == here).all():
+            return here
+        here = after
 
 
 def rest_of_response(graph: Graph, vertex: int) -> list[int]:
@@ -82,11 +128,14 @@ def rest_of_response(graph: Graph, vertex: int) -> list[int]:
 class Tagged:
     """Vertices and, in a response followed for one signal: its tag, whether it is back at it, the signal's number.
 
-    Signals are numbered from 1 on here; number 0 is a vertex that is not followed.
+    In the words signals are numbered from 1 on; number 0 is a vertex that is not followed. `bad`: the packed set of
+    signals that are followed; `copies`: how often a vertex can occur.
     """
 
-    def __init__(self, graph: Graph, watch: Watch, chosen: list[int]) -> None:
-        self.graph, self.watch, self.chosen = graph, watch, chosen
+    def __init__(self, graph: Graph, watch: Watch, bad: int) -> None:
+        self.graph, self.watch = graph, watch
+        self.chosen = [i for i in range(len(watch.signals)) if bad >> i & 1]
+        self.copies = 1 + 4 * len(self.chosen)
         bits = graph.packed.bits
         self.low = np.uint64((1 << bits) - 1)
         self.tag, self.back, self.number = (np.uint64(bits + i) for i in range(3))
@@ -96,20 +145,32 @@ class Tagged:
 
     def moves(self, words: Words) -> tuple[Places, Words]:
         """Every move; at each change of the environment one of the signals may begin to be followed."""
-        followed = words > self.low
-        plain, tagged = np.flatnonzero(~followed), np.flatnonzero(followed)
+        plain = np.flatnonzero(words <= self.low)
         source, target = self.graph.moves(words[plain])
-        sources, targets = [plain[source]], [target]
         changed, after = self.graph.changes(words[plain])
-        before = self.watch(words[plain])[changed]
-        for i in self.chosen:
-            sources.append(plain[changed])
-            tag = (before >> np.uint64(i) & ONE) << self.tag
-            targets.append(after | tag | np.uint64(i + 1) << self.number)
-        source, target = self.graph.steps(words[tagged] & self.low)
-        sources.append(tagged[source])
-        targets.append(self._follow(words[tagged][source], target))
-        return np.concatenate(sources), np.concatenate(targets)
+        began, first = self.followed(words[plain][changed], after)
+        place, further = self.steps(words)
+        return (
+            np.concatenate([plain[source], plain[changed[began]], place]),
+            np.concatenate([target, first, further]),
+        )
+
+    def followed(self, before: Words, after: Words) -> tuple[Places, Words]:
+        """Each change from `before` to `after` with one of the signals followed from now on: (which change, word)."""
+        value = self.watch(before)
+        tags = [
+            after | (value >> np.uint64(i) & ONE) << self.tag | np.uint64(i + 1) << self.number for i in self.chosen
+        ]
+        return np.tile(np.arange(len(after)), len(tags)), np.concatenate([np.zeros(0, np.uint64), *tags])
+
+    def steps(self, words: Words) -> tuple[Places, Words]:
+        """Steps of the response from the words that are followed and not yet back, marked when the signal is back."""
+        place = np.flatnonzero((words > self.low) & ~self.flagged(words))
+        source, target = self.graph.steps(words[place] & self.low)
+        before = words[place][source]
+        tagged = target | before & ~self.low
+        back = self._differs(before) & ~self._differs(tagged)
+        return place[source], tagged | back.astype(np.uint64) << self.back
 
     def flagged(self, words: Words) -> Bits:
         """Whether the signal is back at its old value."""
@@ -119,15 +180,13 @@ class Tagged:
         """The run without tags."""
         return [word & int(self.low) for word in run]
 
-    def signal(self, word: int) -> str:
-        """The signal that is followed."""
-        return self.watch.signals[(word >> int(self.number)) - 1]
+    def signal(self, word: int) -> int:
+        """The position of the signal that is followed."""
+        return (word >> int(self.number)) - 1
 
-    def _follow(self, before: Words, after: Words) -> Words:
-        """Steps of the response, the tag kept, the mark set when the signal is back."""
-        tagged = after | before & ~self.low & ~(ONE << self.back)
-        back = self._differs(before) & ~self._differs(tagged)
-        return tagged | back.astype(np.uint64) << self.back
+    def numbers(self, words: Words) -> Places:
+        """The positions of the signals that are followed."""
+        return (words >> self.number).astype(np.int64) - 1
 
     def _differs(self, tagged: Words) -> Bits:
         value = self.watch(tagged & self.low) >> ((tagged >> self.number) - ONE)

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -31,6 +32,18 @@ def switchings(packed: Packed, before: Words, after: Words) -> Places:
     """How many nodes switch in each move."""
     nodes = packed.state_mask & ~packed.input_mask
     return np.bitwise_count((before ^ after) & nodes).astype(np.int64)
+
+
+Measure = tuple[int, int, int, list[list[int]]]
+"""What the runs of a refutation are compared by."""
+
+
+def measure(packed: Packed, runs: Sequence[Sequence[int]]) -> Measure:
+    """Steps that change an input, steps, switchings of nodes, and values, of several runs together."""
+    moves = [(a ^ b) & int(packed.state_mask) for run in runs for a, b in pairwise(run)]
+    changes = sum(moved & int(packed.input_mask) != 0 for moved in moves)
+    nodes = sum((moved & ~int(packed.input_mask)).bit_count() for moved in moves)
+    return changes, len(moves), nodes, [values(packed, run) for run in runs]
 
 
 def values(packed: Packed, words: Sequence[int]) -> list[int]:

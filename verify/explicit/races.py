@@ -43,6 +43,10 @@ class Changes:
         alike = np.bitwise_count(picked).astype(np.int64) if packed.burst else np.ones(len(picked), np.int64)
         return cls(group, edges.source[order][fresh], alike[order][fresh])
 
+    def targets(self, graph: Graph, number: int) -> Words:
+        """The vertices right after a change: in a burst there are several."""
+        return graph.vertices[graph.change_edges.target[self.group == number]]
+
 
 class Races:
     """The critical races of a graph, one for each input change or burst."""
@@ -64,7 +68,7 @@ class Races:
         return found
 
     @cached_property
-    def _lengths(self) -> tuple[Places, Places, Places]:
+    def lengths(self) -> tuple[Places, Places, Places]:
         """Of each race the pair's steps that change an input, its steps, and its switchings after the change."""
         edges = self.graph.change_edges
         racing = np.flatnonzero(np.isin(self.changes.group, self.numbers))
@@ -79,7 +83,7 @@ class Races:
         """The least pair of runs (as vertices, from the same start state) that end differently, or None."""
         if not len(self.numbers):
             return None
-        numbers, paths = least_beginnings(self.graph, self.changes.source[self.numbers], self._lengths)
+        numbers, paths = least_beginnings(self.graph, self.changes.source[self.numbers], self.lengths)
         pairs = [(self.pair(number, path)) for number, path in zip(self.numbers[numbers].tolist(), paths, strict=True)]
         return least_pair(self.graph, pairs)
 
@@ -91,8 +95,7 @@ class Races:
     def endings(self, number: int) -> Iterator[Path]:
         """For each end of a change the least run from the vertex before the change to it, in their order."""
         source = self.graph.vertices[self.changes.source[number]]
-        targets = self.graph.vertices[self.graph.change_edges.target[self.changes.group == number]]
-        search = response(self.graph, source, targets)
+        search = response(self.graph, source, self.changes.targets(self.graph, number))
         goals = ends_of(self.graph, search)
         ways = Ways(search, goals)
         return (ways.run(*goal) for goal in ways.ordered(goals))
@@ -122,12 +125,12 @@ def ends_of(graph: Graph, search: Search) -> dict[Key, Words]:
 
 
 def least_beginnings(
-    graph: Graph, sources: Places, lengths: tuple[Places, Places, Places]
+    graph: Graph, sources: Places, lengths: tuple[Places, Places, Places], runs: int = 2
 ) -> tuple[list[int], list[Path]]:
     """Which of several failures are the least, as far as that is settled by lengths and the runs before them.
 
-    `sources`: the vertex before each failure; `lengths`: of the pair of runs, the switchings after the vertex only.
-    Gives positions, each with the least run to its vertex.
+    `sources`: the vertex before each failure; `lengths`: steps that change an input, steps, and switchings of its
+    `runs` together, the switchings after the vertex only. Gives positions, each with the least run to its vertex.
     """
     inputs, steps, nodes = lengths
     order = np.lexsort((steps, inputs))
@@ -139,7 +142,7 @@ def least_beginnings(
         rows = zip(words.tolist(), *(c.tolist() for c in ways.length(key, words)), strict=True)
         before |= {word: (key, count, rank) for word, count, rank in rows}
     words = graph.vertices[sources[kept]].tolist()
-    total = [nodes[i] + 2 * before[w][1] for i, w in zip(kept.tolist(), words, strict=True)]
+    total = [nodes[i] + runs * before[w][1] for i, w in zip(kept.tolist(), words, strict=True)]
     tied = [(i, w) for i, w, t in zip(kept.tolist(), words, total, strict=True) if t == min(total)]
     first: dict[int, int] = {}
     for _, w in tied:

@@ -18,7 +18,7 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import Program
 from settled.verify.explicit.graph import MANY, Graph
-from settled.verify.explicit.hazards import Watch, least_flicker, rest_of_response
+from settled.verify.explicit.hazards import Watch, least_flicker, rest_of_response, still_changing
 from settled.verify.explicit.oscillations import least_oscillation
 from settled.verify.explicit.races import all_ends
 from settled.verify.explicit.serial_steps import SerialSteps
@@ -153,24 +153,6 @@ class Responses(Graph):
         found = all_ends(self, vertex) if only == MANY else [only]
         return tuple((self.vertices[found] & self.packed.state_mask).tolist())
 
-    def flickers(self, watch: Watch) -> tuple[Words, Words]:
-        """For each vertex the watched signals that can still change at least once, at least twice."""
-        value, edges = watch(self.vertices), self.step_edges
-        moved = value[edges.source] ^ value[edges.target]
-        once = self._back(moved)
-        return once, self._back(moved & once[edges.target])
-
-    def _back(self, seen: Words) -> Words:
-        """What is seen on some edge of a run from each vertex."""
-        edges = self.step_edges
-        here = np.zeros(len(self), np.uint64)
-        while True:
-            after = here.copy()
-            np.bitwise_or.at(after, edges.source, seen | here[edges.target])
-            if (after == here).all():
-                return here
-            here = after
-
 
 class Replies:
     """Responses of one circuit, found in batches and remembered.
@@ -197,7 +179,7 @@ class Replies:
         self._explored += len(graph)
         self.limits.tick(self._explored, 0)
         nothing = np.zeros_like(graph.vertices)
-        once, twice = graph.flickers(Watch(graph, self.signals)) if self.flickers else (nothing, nothing)
+        once, twice = still_changing(graph, Watch(graph, self.signals)) if self.flickers else (nothing, nothing)
         for key, v in zip(fresh, graph.index(np.array(words, np.uint64)).tolist(), strict=True):
             ends = None if graph.unsettled[v] else graph.ends_from(v)
             self._known[key] = Reply(ends, int(once[v]), int(twice[v]))

@@ -6,7 +6,7 @@ from collections.abc import Iterable, Sequence
 
 from settled.models.circuit import Circuit
 from settled.verify.properties import kinds
-from settled.verify.renderers import power_up_text
+from settled.verify.renderers import cause_text, power_up_text
 from settled.verify.renderers.page import Page, columns, pad
 from settled.verify.renderers.trace_text import tables
 from settled.verify.result import Result
@@ -38,9 +38,21 @@ def verdict(result: Result, circuit: Circuit, page: Page) -> str:
     lines += page.wrap(basis(result, circuit), MARGIN)
     for remark in remarks(result, circuit):
         lines += page.wrap(remark, MARGIN, MARGIN + "  ")
-    if result.traces:
+    if result.facts.get("causes"):
+        lines += _causes(result, circuit, page)
+    elif result.traces:
         lines += ["", *tables(result, circuit, page, MARGIN)]
     return "\n".join(lines) + "\n"
+
+
+def _causes(result: Result, circuit: Circuit, page: Page) -> list[str]:
+    """Each cause under its heading, with its runs."""
+    lines = []
+    for heading, group in cause_text.groups(result):
+        lines += ["", *(page.paint("strong", line) for line in page.wrap(heading, MARGIN))]
+        lines += page.wrap(group.claim, MARGIN, MARGIN + "  ") if group.claim != result.claim else []
+        lines += ["", *tables(group, circuit, page, MARGIN)]
+    return lines
 
 
 def basis(result: Result, circuit: Circuit) -> str:
@@ -67,6 +79,9 @@ def remarks(result: Result, circuit: Circuit) -> list[str]:
         said.append(f"vacuous: nothing to range over: {kinds()[result.check].vacuous}")
     if "hazard" in facts:
         said.append(_hazard(facts["hazard"]["class"], facts["hazard"]["kind"]))
+    said += cause_text.faults(result)
+    if facts.get("causes_reason"):
+        said.append(f"there may be further causes: {facts['causes_reason']}")
     if "some_run_settles" in facts:
         some = facts["some_run_settles"]
         said.append("possible under some delays: another ordering settles" if some else "persists under every ordering")

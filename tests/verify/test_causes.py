@@ -1,0 +1,188 @@
+"""The ordering decision behind a race or hazard: who was late, and every cause of a failure with --all."""
+
+from __future__ import annotations
+
+import json
+from importlib.resources import files
+from typing import Any
+
+import oracle_traces
+import pytest
+from jsonschema import Draft202012Validator
+from judging import session_of
+from oracle import resting, second_changes
+from oracle_world import World, reach
+from random_circuits import random_question
+from typer.testing import CliRunner
+
+from settled.models.circuit import Circuit
+from settled.models.environment import Environment
+from settled.models.specification import Property
+from settled.verify import check
+from settled.verify.cli import app
+from settled.verify.inputs import gallery
+from settled.verify.result import Result, document
+from settled.verify.session import Settings
+
+RACES = {
+    "clock_switch_unruled": ("ca/sel", "ma-", "ca-"),
+    "level_latch": ("g", "q-", "keep+"),
+    "sample_flip_flop_wires": ("clk", "c-", "clk>c-"),
+    "wake_latch_unruled": ("s/r", "q+", "p+"),
+}
+HAZARDS = {
+    "clock_switch_plain": ("out-", "ga+", "ga+"),
+    "level_latch": ("q-", "keep+", "keep+"),
+    "sample_flip_flop": ("q_n+", "c+", "c+"),
+    "wake_latch_unruled": ("q+", "r+", "r+"),
+}
+
+
+@pytest.mark.parametrize("name", RACES)
+def test_the_race_of_a_gallery_file(name: str) -> None:
+    (result,) = check(gallery()[name], only=["race-free"]).results
+    race = result.facts["race"]
+    assert (race["fork"], race["events"]["early"], race["events"]["late"]) == RACES[name]
+    shown = result.traces[race["trace"]].steps[race["step"]]
+    assert race["early"] in shown.switched
+
+
+@pytest.mark.parametrize("name", HAZARDS)
+def test_the_late_gate_of_a_gallery_file(name: str) -> None:
+    (result,) = check(gallery()[name], only=["hazard-free"]).results
+    events = result.facts["fault"]["events"]
+    assert (events["signal"], events["term"], events["late"]) == HAZARDS[name]
+
+
+def refutations(check: str, cases: int, every: bool = False) -> list[tuple[Circuit, Environment, Any, Result]]:
+    found = []
+    for seed in range(cases):
+        circuit, environment, options = random_question(f"cause {seed}", check, nodes=4, inputs=2)
+        session = session_of(circuit, environment, (Property(check, check, options),), Settings(every=every))
+        (result,) = session.results()
+        if result.verdict == "refuted":
+            found.append((circuit, environment, options, result))
+    assert len(found) > cases / 12
+    return found
+
+
+def test_a_run_is_decided_from_the_step_on_from_which_only_its_end_can_be_reached() -> None:
+    for circuit, environment, _, result in refutations("race-free", 150):
+        world = World(circuit, environment)
+        for trace, decided in zip(result.traces, result.facts["decided_at"], strict=True):
+            run = oracle_traces.Run(world, [frozenset(s for s in circuit.signals if t.state[s]) for t in trace.steps])
+            run.begin_at_start()
+            before = result.facts["before"]
+            change = run.states[before] & set(circuit.inputs) ^ run.last & set(circuit.inputs)
+            for place in range(before + 1, len(run.states)):
+                now = [at for c, at in run.response_from(before, place + 1) if c == change]
+                open_ = {at.state for at in reach(now, world.respond) if world.ended(at)}
+                assert (open_ == {run.last}) == (place >= decided)
+
+
+def test_the_early_event_of_a_race_is_at_its_step_and_the_late_one_is_not_before_it() -> None:
+    for circuit, _, _, result in refutations("race-free", 150):
+        race, before = result.facts["race"], result.facts["before"]
+        steps = result.traces[race["trace"]].steps
+        assert race["early"] in steps[race["step"]].switched and race["early"] != race["late"]
+        value = steps[race["step"]].state[race["early"]]
+        assert race["events"]["early"] == race["early"] + ("+" if value else "-")
+        assert set(race["fork"].split("/")) <= set(circuit.signals)
+        assert before < race["step"] <= max(result.facts["decided_at"])
+
+
+def test_the_late_gate_of_a_hazard_was_due_before_the_signal_changed() -> None:
+    late = []
+    for circuit, _, _, result in refutations("hazard-free", 80):
+        fault, signal = result.facts["fault"], result.facts["hazard"]["signal"]
+        steps, last, first = result.traces[0].steps, result.facts["offending_step"], fault["step"]
+        values = [step.state[signal] for step in steps[: last + 1]]
+        assert values[first] != values[first - 1] == values[last]
+        assert any(fault["term"] in step.switched for step in steps[result.facts["before"] + 1 : last + 1])
+        if fault["late"] in circuit.nodes and first > result.facts["before"] + 1:
+            assert fault["late"] in steps[first - 1].excited
+            late.append(fault["late"])
+    assert len(late) > 5
+
+
+@pytest.mark.parametrize("kind", ["race-free", "hazard-free"])
+def test_every_failing_change_has_a_cause_and_every_cause_is_a_failure(kind: str) -> None:
+    several = 0
+    for circuit, environment, options, result in refutations(kind, 60, every=True):
+        (alone,) = session_of(circuit, environment, (Property(kind, kind, options),)).results()
+        causes = result.facts["causes"]
+        assert result.facts["causes_reason"] is None
+        assert result.traces == alone.traces and causes[0]["id"] == alone.facts["cause"]
+        assert len({cause["id"] for cause in causes}) == len(causes)
+        written = [trace for trace in document_of(circuit, environment, kind, options, result)["traces"]]
+        for cause in causes:
+            traces = [written[i] for i in cause["traces"]]
+            assert oracle_traces.offending(circuit, environment, kind, options, traces, cause) is None
+        failing = failures(World(circuit, environment), kind, options)
+        counts = [cause["explains"] for cause in causes]
+        assert max(counts) <= len(failing) <= sum(counts)
+        several += len(causes) > 1
+    assert several > 2
+
+
+def document_of(circuit: Circuit, environment: Environment, kind: str, options: Any, result: Result) -> dict[str, Any]:
+    session = session_of(circuit, environment, (Property(kind, kind, options),))
+    (written,) = document([session.report([result])])["files"][0]["results"]
+    return written
+
+
+def failures(world: World, kind: str, options: Any) -> list[Any]:
+    """The input changes that fail, by enumeration."""
+    changes = [(s, c, sch) for s in resting(world) for c, sch in world.changes(s).items()]
+    if kind == "race-free":
+        return [(s, c) for s, c, schedules in changes if len(world.ends(s, schedules)) > 1]
+    watched = options.get("signals", world.circuit.outputs)
+    return [(s, c) for s, c, sch in changes if any(second_changes(world, s, sch, name) for name in watched)]
+
+
+LATCH = """
+[circuit]
+inputs = ["d", "g"]
+outputs = ["q"]
+[circuit.excitation]
+n = "~g"
+take = "d & g"
+keep = "q & n"
+q = "take | keep"
+[[property]]
+check = "race-free"
+[[property]]
+check = "hazard-free"
+"""
+
+
+def identities(text: str, **settings: Any) -> dict[str, str]:
+    return {r.check: r.facts["cause"] for r in check("latch.toml", text=text, **settings).results}
+
+
+def test_an_identity_survives_what_does_not_concern_it() -> None:
+    """Another order of the lines, a gate more, another start, another name of the property."""
+    moved = LATCH.replace('n = "~g"\n', "").replace("q = ", 'lamp = "~q"\nn = "~g"\nq = ')
+    held = LATCH.replace("[[property]]", "[environment]\nstart = { q = 1, d = 1 }\n[[property]]\nname = 'lost'", 1)
+    assert identities(LATCH) == identities(moved) == identities(held)
+    renamed = LATCH.replace("keep", "hold")
+    assert not set(identities(LATCH).values()) & set(identities(renamed).values())
+
+
+def test_all_on_the_command_line_in_text_and_in_the_document() -> None:
+    shown = CliRunner().invoke(app, ["check", "--all", "--only", "hazard-free", "-"], input=LATCH)
+    assert shown.exit_code == 1
+    assert "cause 1 of 2, " in shown.stdout and ", explains 1 input change" in shown.stdout
+    assert shown.stdout.count("did not wait for") == 2
+    written = json.loads(CliRunner().invoke(app, ["check", "--all", "--json", "-"], input=LATCH).stdout)
+    schema = json.loads(files("settled.verify").joinpath("result.schema.json").read_text())
+    Draft202012Validator(schema).validate(written)
+    (race, hazard) = written["files"][0]["results"]
+    assert [cause["traces"] for cause in hazard["facts"]["causes"]] == [[0], [1]]
+    assert [cause["traces"] for cause in race["facts"]["causes"]] == [[0, 1]]
+
+
+def test_a_limit_that_ends_the_enumeration_is_named() -> None:
+    text = LATCH.replace("[[property]]", "[environment]\nstart = { q = 0, d = 0, g = 0 }\n[[property]]", 1)
+    shown = CliRunner().invoke(app, ["check", "--all", "--states", "26", "--only", "hazard-free", "-"], input=text)
+    assert "there may be further causes: limit of 26 total states reached" in " ".join(shown.stdout.split())

@@ -1,0 +1,43 @@
+"""The one ordering decision behind a refutation: which two events raced, or which gate was late."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from hashlib import sha256
+from typing import Any
+
+from settled.models.states import Behaviour, Run
+from settled.verify.causes.late_gates import hazard_cause
+from settled.verify.causes.racing_events import race_cause
+from settled.verify.limits import Limits
+from settled.verify.questions import Diverges, Flickers, Question
+
+STATES, SECONDS = 200_000, 10.0
+"""Total states of one response that are looked at for a cause, and for how long."""
+
+
+def explain(behaviour: Behaviour, question: Question, runs: Sequence[Run], facts: Mapping[str, Any]) -> dict[str, Any]:
+    """Further facts about a refuted race or hazard: its cause, and the identity of that; empty for other failures."""
+    if isinstance(question, Flickers):
+        signal = facts["hazard"]["signal"]
+        fault = hazard_cause(behaviour, runs[0].states, signal, facts["before"], facts["offending_step"])
+        return {"fault": fault, "cause": hazard_identity(signal, fault)}
+    if isinstance(question, Diverges):
+        found = race_cause(behaviour, [run.states for run in runs], facts["before"], Limits(SECONDS, STATES))
+        return {**found, "cause": race_identity(found["race"])} if found else {}
+    return {}
+
+
+def race_identity(race: Mapping[str, Any]) -> str:
+    """The identity of a race: of where both paths begin, what came too early, what came too late."""
+    return identity("race-free", race["fork"], race["early"], race["late"])
+
+
+def hazard_identity(signal: str, fault: Mapping[str, Any]) -> str:
+    """The identity of a hazard: of the signal and of what turned it back."""
+    return identity("hazard-free", signal, fault["term"])
+
+
+def identity(*names: str) -> str:
+    """A short name for a cause: the same as long as the names that take part are."""
+    return sha256("\n".join(names).encode()).hexdigest()[:8]
