@@ -12,6 +12,9 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.netlist import Gate, Netlist
 from settled.models.specification import CircuitSource, Property, Specification
+from settled.verify.engines import attempt, engines
+from settled.verify.limits import Limits
+from settled.verify.questions import Task
 from settled.verify.result import Result, document
 from settled.verify.session import Session, Settings
 
@@ -34,6 +37,13 @@ def session_of(
     return Session(specification, settings or Settings())
 
 
+def ask_only(session: Session, name: str) -> None:
+    """Let one engine answer every question of a session."""
+    (engine,) = [e for e in engines() if e.name == name]
+    environment = session.specification.environment
+    session.ask = lambda circuit, question: attempt(engine, Task(circuit, environment, Limits()), question)
+
+
 def complaints(
     circuit: Circuit,
     environment: Environment,
@@ -41,9 +51,15 @@ def complaints(
     options: Mapping[str, Any],
     shortest: bool = True,
     settings: Settings | None = None,
+    engine: str | None = None,
 ) -> tuple[list[str], str]:
-    """What the oracle has against the program's result on one property, and the verdict of both."""
+    """What the oracle has against the program's result on one property, and the verdict of both.
+
+    `engine`: the only one that is asked, without the others.
+    """
     session = session_of(circuit, environment, (Property(check, check, options),), settings)
+    if engine is not None:
+        ask_only(session, engine)
     (result,) = session.results()
     expected = oracle.decide(circuit, environment, check, options)
     if result.verdict != expected.verdict:
