@@ -9,7 +9,6 @@ of steps is not.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from functools import cache
 
 import numpy as np
@@ -33,27 +32,40 @@ class SerialSteps:
         self._reads = {
             place[n]: sum({place[s] for s in support(circuit.excitation[n]) if s in place}) for n in circuit.nodes
         }
-        self.choices = cache(self._choices)
+        self._readers = {bit: sum(other for other, reads in self._reads.items() if reads & bit) for bit in self._reads}
+        self.choices, self._together = cache(self._choices), cache(self._reading_one_another)
 
     def _choices(self, movers: int) -> Words:
         """The sets to be switched when the nodes in a packed set are excited."""
         found = list(members(movers))
         if self.circuit.winners == "any":
-            found += self._together(movers)
+            found += self._together(self._knot(movers))
         return np.array(found, np.uint64)
 
-    def _together(self, movers: int) -> Iterator[int]:
+    def _knot(self, movers: int) -> int:
+        """What is left of a packed set without nodes that read nothing of it or that nothing of it reads."""
+        left, before = movers, 0
+        while left != before:
+            before = left
+            for bit in members(left):
+                if not self._reads[bit] & ~bit & left or not self._readers[bit] & ~bit & left:
+                    left ^= bit
+        return left
+
+    def _reading_one_another(self, knot: int) -> tuple[int, ...]:
         """The sets of at least two nodes that read one another, none with both nodes of an exclusive pair."""
-        for part in self._loops(movers):
+        found = []
+        for part in self._loops(knot):
             if len(part) > LARGEST:
                 self.limits.refuse(f"{len(part)} nodes that read one another can switch in one step")
             for chosen in subsets(sum(part)):
                 whole = any(len(loop) == chosen.bit_count() for loop in self._loops(chosen))
                 if whole and not any(chosen & pair == pair for pair in self.circuit.pairs):
-                    yield chosen
+                    found.append(chosen)
+        return tuple(found)
 
     def _loops(self, movers: int) -> list[list[int]]:
-        """The sets of nodes, within a packed set, that read one another."""
+        """The sets of at least two nodes, within a packed set, that read one another."""
         found = components({n: list(members(self._reads[n] & movers)) for n in members(movers)})
         return [part for part in found if len(part) > 1]
 
