@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from functools import cached_property
 
 from settled.models.components import components
-from settled.models.logic import STABLE, Expr, and_, not_, rename, substitute, support, var, xor
+from settled.models.logic import STABLE, Expr, Program, and_, not_, rename, substitute, support, var, xor
 
 
 @dataclass(frozen=True, eq=False)
@@ -54,6 +54,11 @@ class Circuit:
     def pairs(self) -> tuple[int, ...]:
         """The pairs of `exclusive`, packed."""
         return tuple(1 << self.place[a] | 1 << self.place[b] for a, b in self.exclusive)
+
+    @cached_property
+    def targets(self) -> Program:
+        """The excitation functions, in the order of `excitation`, made ready for evaluation."""
+        return Program([*self.excitation.values()])
 
     @cached_property
     def is_excited(self) -> dict[str, Expr]:

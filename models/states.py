@@ -16,7 +16,7 @@ from typing import NamedTuple
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
-from settled.models.logic import Expr, evaluate
+from settled.models.logic import Expr, Program, evaluate
 
 
 class Situation(NamedTuple):
@@ -54,7 +54,7 @@ def value(circuit: Circuit, expressions: Iterable[Expr], state: int) -> list[int
 def excited(circuit: Circuit, state: int) -> int:
     """The packed set of nodes whose excitation differs from their value."""
     values = unpack(circuit, state)
-    targets = evaluate(list(circuit.excitation.values()), values)
+    targets = circuit.targets.run(values)
     return sum(1 << circuit.place[n] for n, t in zip(circuit.excitation, targets, strict=True) if t != values[n])
 
 
@@ -97,20 +97,16 @@ class Behaviour:
         self.admits = lru_cache(maxsize=100_000)(self._admits)
 
     @cached_property
-    def _assume(self) -> list[Expr]:
-        return self.circuit.resolve(*self.environment.assume)
+    def _assume(self) -> Program:
+        return Program(self.circuit.resolve(*self.environment.assume))
 
     @cached_property
-    def _guards(self) -> list[tuple[int, Expr, Expr]]:
-        found = []
-        for i, name in enumerate(self.circuit.inputs):
-            guard = self.environment.guard(name)
-            rises, falls = self.circuit.resolve(guard.rises, guard.falls)
-            found.append((1 << i, rises, falls))
-        return found
+    def _guards(self) -> Program:
+        guards = map(self.environment.guard, self.circuit.inputs)
+        return Program(self.circuit.resolve(*(e for guard in guards for e in (guard.rises, guard.falls))))
 
     def _admits(self, vector: int) -> bool:
-        return all(evaluate(self._assume, unpack(self.circuit, vector)))
+        return all(self._assume.run(unpack(self.circuit, vector)))
 
     def is_stable(self, state: int) -> bool:
         """Whether no node is excited."""
@@ -125,12 +121,8 @@ class Behaviour:
 
     def allowed(self, state: int) -> int:
         """The packed set of inputs whose guard lets them change in `state`."""
-        values = unpack(self.circuit, state)
-        mask = 0
-        for bit, rises, falls in self._guards:
-            if evaluate([falls if state & bit else rises], values)[0]:
-                mask |= bit
-        return mask
+        guards = self._guards.run(unpack(self.circuit, state))
+        return sum(1 << i for i in range(len(self.circuit.inputs)) if guards[2 * i + (state >> i & 1)])
 
     def finishes(self, vector: int, outstanding: int) -> bool:
         """Whether the outstanding inputs can change one after the other with every vector admitted."""

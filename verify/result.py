@@ -10,7 +10,8 @@ from typing import Any
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.problems import Problem
-from settled.models.states import Run, excited, value
+from settled.models.logic import Program
+from settled.models.states import Run, excited, unpack
 from settled.verify.questions import Question
 
 FORMAT = 1
@@ -79,9 +80,10 @@ class FileReport:
 def trace(circuit: Circuit, run: Run, also: Sequence[str] = ()) -> Trace:
     """The steps of a run, with the values of inputs, nodes, outputs and the signals in `also`."""
     names = list(dict.fromkeys([*circuit.signals, *circuit.outputs, *also]))
+    shown = Program(circuit.resolve(*map(circuit.signal, names)))
     steps = []
     for i, state in enumerate(run.states):
-        values = value(circuit, [circuit.signal(n) for n in names], state)
+        values = shown.run(unpack(circuit, state))
         waiting = excited(circuit, state)
         moved = (run.states[i - 1] ^ state) if i else 0
         steps.append(
