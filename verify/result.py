@@ -9,8 +9,8 @@ from typing import Any
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
-from settled.models.problems import Problem
 from settled.models.logic import Program
+from settled.models.problems import Problem
 from settled.models.states import Run, excited, unpack
 from settled.verify.questions import Question
 
