@@ -78,6 +78,9 @@ Memory = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of memory f
 Jobs = Annotated[int, typer.Option(metavar="N", min=1, help="How many engines may work side by side.")]
 Every = Annotated[bool, typer.Option("--all", help="Show every cause of a race or hazard, not only the shortest run.")]
 Allow = Annotated[bool, typer.Option("--allow-vacuous", help="Let a vacuous proof count as any other.")]
+Document = Annotated[
+    str, typer.Argument(metavar="RESULT", show_default=False, help="A result.json, or the directory that holds it.")
+]
 _CIRCUIT = "A netlist, or a file with a [circuit] table; `-` and gallery names as for `check`."
 Original = Annotated[str, typer.Argument(metavar="ORIGINAL", show_default=False, help=_CIRCUIT)]
 Other = Annotated[str, typer.Argument(metavar="OTHER", show_default=False, help="The same.")]
@@ -256,6 +259,29 @@ def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> 
         screen.warn(f"cannot write into {out}: {error.strerror}")
         return False
     return True
+
+
+@app.command()
+def review(result: Document, only: Only = None) -> None:
+    """Walk through the counterexamples of a result document.
+
+    In a terminal, step by step with the keys shown at the bottom; into a pipe, all in full.
+    """
+    from settled.models.problems import InputError
+    from settled.verify.reviewing import review as shown
+    from settled.verify.terminal import Screen
+
+    screen = Screen()
+    try:
+        shown(result, tuple(only or ()), screen)
+    except InputError as error:
+        screen.refused(error.problems, {result: ""})
+        raise typer.Exit(BAD_INPUT) from None
+    except BrokenPipeError:
+        raise
+    except Exception as error:
+        screen.broke(result, error)
+        raise typer.Exit(INTERNAL) from None
 
 
 @app.command()

@@ -124,7 +124,8 @@ def _file(report: FileReport) -> dict[str, Any]:
         "winners": c.winners,
     }
     results = [_result(r) for r in report.results]
-    return {"file": report.file, "title": report.title, "circuit": circuit, "results": results}
+    sources = {"sources": dict(report.inputs)} if report.inputs else {}
+    return {"file": report.file, "title": report.title, "circuit": circuit, **sources, "results": results}
 
 
 def _result(r: Result) -> dict[str, Any]:
