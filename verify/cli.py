@@ -76,7 +76,8 @@ Seconds = Annotated[float, typer.Option(metavar="N", callback=_seconds, help="Ti
 States = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of total states for one property.")]
 Memory = Annotated[int, typer.Option(metavar="N", min=1, help="Limit of memory for a process, in megabytes.")]
 Jobs = Annotated[int, typer.Option(metavar="N", min=1, help="How many engines may work side by side.")]
-Every = Annotated[bool, typer.Option("--all", help="Show every cause of a race or hazard, not only the shortest run.")]
+Every = Annotated[bool, typer.Option("--all", help="Go on to every cause of a race or hazard.")]
+Whole = Annotated[bool, typer.Option("--all-signals", help="Show also the nodes that play no part in a run.")]
 Allow = Annotated[bool, typer.Option("--allow-vacuous", help="Let a vacuous proof count as any other.")]
 Document = Annotated[
     str, typer.Argument(metavar="RESULT", show_default=False, help="A result.json, or the directory that holds it.")
@@ -100,6 +101,7 @@ def check(
     out: Out = None,
     only: Only = None,
     every: Every = False,
+    all_signals: Whole = False,
     seconds: Seconds = 60.0,
     states: States = 4_000_000,
     memory: Memory = 8_000,
@@ -114,7 +116,7 @@ def check(
     from settled.verify.session import Settings, load
     from settled.verify.terminal import Screen
 
-    screen = Screen(silent=json)
+    screen = Screen(json, all_signals)
     settings = Settings(tuple(only or ()), seconds, states, memory, jobs, screen.progress, every)
     outcome = Outcome()
     for name in files:
@@ -132,6 +134,7 @@ def equivalent(
     environment: Rules = None,
     rename: Rename = None,
     transients: Transients = False,
+    all_signals: Whole = False,
     json: Json = False,
     out: Out = None,
     seconds: Seconds = 60.0,
@@ -149,7 +152,7 @@ def equivalent(
     from settled.verify.session import Settings
     from settled.verify.terminal import Screen
 
-    screen = Screen(silent=json)
+    screen = Screen(json, all_signals)
     settings = Settings((), seconds, states, memory, jobs, screen.progress)
     outcome = Outcome()
 
@@ -262,7 +265,7 @@ def _deliver(outcome: Outcome, screen: Screen, json: bool, out: Path | None) -> 
 
 
 @app.command()
-def review(result: Document, only: Only = None) -> None:
+def review(result: Document, only: Only = None, all_signals: Whole = False) -> None:
     """Walk through the counterexamples of a result document.
 
     In a terminal, step by step with the keys shown at the bottom; into a pipe, all in full.
@@ -271,7 +274,7 @@ def review(result: Document, only: Only = None) -> None:
     from settled.verify.reviewing import review as shown
     from settled.verify.terminal import Screen
 
-    screen = Screen()
+    screen = Screen(whole=all_signals)
     try:
         shown(result, tuple(only or ()), screen)
     except InputError as error:

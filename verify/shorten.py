@@ -21,11 +21,15 @@ from settled.models.environment import Environment
 from settled.models.states import Run
 from settled.verify.engines import attempt, exhaustive
 from settled.verify.explicit.graph import Graph
+from settled.verify.explicit.stable_counts import least_miscount, least_round
 from settled.verify.limits import LimitReached
-from settled.verify.questions import Answer, Deadlocks, Flickers, Question, Reaches, Task, Withdraws
+from settled.verify.questions import Answer, Deadlocks, Flickers, Question, Reaches, StableCount, Task, Withdraws
 
 STATES, SECONDS = 300_000, 10.0
 """Total states that a search for shorter runs may visit, and the time that both may take."""
+
+LISTED = 18
+"""Inputs and nodes of a circuit of which every total state is looked at."""
 
 ALONG_ONE_RUN = (Deadlocks, Flickers, Reaches, Withdraws)
 """Questions of which even a search that a limit ended finds the least run."""
@@ -33,6 +37,8 @@ ALONG_ONE_RUN = (Deadlocks, Flickers, Reaches, Withdraws)
 
 def shortened(task: Task, question: Question, answer: Answer) -> Answer:
     """A refutation with the least runs that can be found at little cost."""
+    if isinstance(question, StableCount):
+        return _least_count(task, question, answer)
     if type(question) not in exhaustive.ENGINE.answers or _is_least(task, question, answer):
         return answer
     for graph in _graphs(task, question, answer):
@@ -41,6 +47,25 @@ def shortened(task: Task, question: Question, answer: Answer) -> Answer:
             kept = {k: v for k, v in answer.facts.items() if k not in again.facts or k == "some_run_settles"}
             return replace(answer, runs=again.runs, facts={**again.facts, **kept})
     return answer
+
+
+def _least_count(task: Task, question: StableCount, answer: Answer) -> Answer:
+    """The least input vector with too few or too many stable states, of a circuit whose total states can be listed."""
+    circuit, limits = task.circuit, replace(task.limits, seconds=SECONDS)
+    if len(circuit.signals) > LISTED:
+        return answer
+    packed = Packed(circuit, task.environment)
+    found = least_miscount(packed, question.least, question.most)
+    assert found is not None, "a refutation has an input vector that shows it"
+    vector, states = found
+    shown = states[: max(question.least, (question.most or 0) + 1)]
+    try:
+        runs = [Run(f"stable state {i}", (s,), None, circuit.name) for i, s in enumerate(shown, 1)]
+        runs = runs or [least_round(packed, vector, answer.runs[0].title, limits)]
+    except LimitReached:
+        return answer
+    values = {x: vector >> i & 1 for i, x in enumerate(circuit.inputs)}
+    return replace(answer, runs=tuple(runs), facts={"vector": values, "stable_internal_states": len(shown)})
 
 
 def _is_least(task: Task, question: Question, answer: Answer) -> bool:

@@ -10,6 +10,7 @@ import sys
 import time
 import traceback
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import TextIO
 
 from settled.models.problems import Problem
@@ -49,12 +50,16 @@ class Progress:
 
 
 class Screen:
-    """Shows what becomes of each file; `silent` keeps verdicts off standard output."""
+    """Shows what becomes of each file; `silent` keeps verdicts off standard output, `whole` has every signal shown."""
 
-    def __init__(self, silent: bool = False) -> None:
-        self.silent = silent
+    def __init__(self, silent: bool = False, whole: bool = False) -> None:
+        self.silent, self.whole = silent, whole
         self.progress = Progress(sys.stderr)
         self._opened = 0
+
+    def page(self) -> Page:
+        """The page of standard output."""
+        return replace(page(), whole=self.whole)
 
     def say(self, said: str) -> None:
         """Text on standard output, at once."""
@@ -71,16 +76,18 @@ class Screen:
     def opened(self, session: Session) -> None:
         """A file has been understood."""
         spec = session.specification
-        self.say(("\n" if self._opened else "") + text.opening(spec.path, spec.title, session.understood(), page()))
+        self.say(
+            ("\n" if self._opened else "") + text.opening(spec.path, spec.title, session.understood(), self.page())
+        )
         self._opened += 1
 
     def decided(self, session: Session, result: Result) -> None:
         """There is a verdict."""
-        self.say(text.verdict(result, session.circuit, page()))
+        self.say(text.verdict(result, session.circuit, self.page()))
 
     def closed(self, results: Sequence[Result], left_out: Sequence[str]) -> None:
         """All files are done but those in `left_out`."""
-        self.say(text.closing(results, left_out, page()))
+        self.say(text.closing(results, left_out, self.page()))
 
     def refused(self, problems: Sequence[Problem], texts: Mapping[str, str | None]) -> None:
         """A file cannot be used; `texts` holds what came from elsewhere than a file."""

@@ -239,7 +239,26 @@ def leads_to(world: World, options: Options) -> Shown:
     return [way], loop
 
 
+def stable_states(world: World, options: Options) -> Shown:
+    """The least input vector with too few or too many stable states: those, or the least way to go round."""
+    least, most = options.get("at-least", 1), options.get("at-most")
+    counts = {v: [s for s in world.completions(v) if world.stable(s)] for v in world.vectors()}
+    bad = [v for v, found in counts.items() if len(found) < least or (most is not None and len(found) > most)]
+    vector = min(bad, key=lambda v: row(world, v))
+    if counts[vector]:
+        found = sorted(at(world, s) for s in counts[vector])
+        return found[: max(least, (most or 0) + 1)], None
+
+    def pressing(state: State) -> Waiting:
+        return frozenset((n, n in state) for n in world.excited(state))
+
+    start = {s: at(world, s) for s in world.completions(vector)}
+    way, loop = min(lassos(world, start, world.held, lambda s: s, pressing))
+    return [way], loop
+
+
 SHOWN: dict[str, Callable[[World, Options], Shown]] = {
+    "stable-states": stable_states,
     "settles": settles,
     "race-free": race_free,
     "hazard-free": hazard_free,

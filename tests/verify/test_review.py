@@ -246,6 +246,16 @@ def test_without_the_file_the_document_says_what_it_knows(what: str, result: Pat
     assert "no equations are shown" in " ".join(screen(walk, reasons, Page(100), 40))
 
 
+def test_nodes_that_play_no_part_are_shown_on_request(tmp_path: Path) -> None:
+    asked = ["check", "sample_flip_flop_wires", "--only", "race-free"]
+    (tmp_path / "result.json").write_text(CliRunner().invoke(app, [*asked, "--json"]).stdout)
+    for command in (asked, ["review", str(tmp_path)]):
+        folded, whole = (CliRunner().invoke(app, [*command, *more]).stdout for more in ([], ["--all-signals"]))
+        assert "12 more nodes keep their value" in folded and "keep their value" not in whole
+        headers = re.findall(r"^ *step .*$", whole, re.MULTILINE), re.findall(r"^ *step .*$", folded, re.MULTILINE)
+        assert len(" ".join(headers[0]).split()) > len(" ".join(headers[1]).split()) + 8
+
+
 # ---- in a terminal ---------------------------------------------------------------------------------------------------
 
 

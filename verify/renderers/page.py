@@ -18,10 +18,11 @@ _STYLES = {"good": "32", "bad": "1;31", "open": "33", "strong": "1", "faint": "2
 
 @dataclass(frozen=True)
 class Page:
-    """Columns to fill, and whether ANSI colours are wanted."""
+    """Columns to fill, and whether ANSI colours are wanted; `whole`: no signal is left out for want of room."""
 
     width: int = PIPED
     color: bool = False
+    whole: bool = False
 
     @classmethod
     def of(cls, stream: TextIO) -> Page:

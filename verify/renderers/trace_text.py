@@ -1,7 +1,8 @@
 """Runs as tables: a line a step, a column a signal, excited values with an asterisk.
 
 Runs that begin alike share their beginning; each ending follows under its title. Of circuits too wide for the page
-the nodes are left out that keep their value and are never excited; what is still too wide comes in several blocks.
+the nodes are left out that keep their value and are never excited, unless the page is to show the whole; what is still
+too wide comes in several blocks.
 """
 
 from __future__ import annotations
@@ -118,7 +119,7 @@ def table(parts: Sequence[Section], circuit: Circuit, page: Page, margin: str) -
     shown = [row for part in parts for row in part.rows]
     room = page.width - len(margin) - _steps(shown).width
     everything = tuple(shown[0].step.state)
-    active = tuple(s for s in everything if _counts(s, shown, circuit))
+    active = tuple(s for s in everything if page.whole or _counts(s, shown, circuit))
     for signals, broken in ((everything, False), (active, False), (active, True)):
         values = [_values(s, shown, page, broken) for s in signals]
         found = blocks([_switched(shown, page), *values, _notes(shown)], room)
@@ -205,9 +206,7 @@ def _block(found: Sequence[Column], parts: Sequence[Section], page: Page, margin
     return lines
 
 
-def _lines(
-    cells: Sequence[Sequence[str]], found: Sequence[Column], page: Page, margin: str, style: str
-) -> list[str]:
+def _lines(cells: Sequence[Sequence[str]], found: Sequence[Column], page: Page, margin: str, style: str) -> list[str]:
     """The lines of one row."""
     lines = []
     for i in range(max(map(len, cells))):

@@ -81,7 +81,8 @@ def _state(walk: Walk, page: Page) -> list[str]:
     """The values in the present step; nodes that never move are counted only when there are many."""
     circuit, step = walk.here.file.circuit, walk.trace.steps[walk.step]
     inner = [s for s in step.state if s not in circuit.inputs]
-    idle = {s for s in inner if not _moves(walk.trace.steps, s)} if len(inner) > 16 else set()
+    folded = len(inner) > 16 and not page.whole
+    idle = {s for s in inner if not _moves(walk.trace.steps, s)} if folded else set()
     lines = page.wrap(_values(step, [s for s in step.state if s in circuit.inputs]), "inputs  ")
     shown = _values(step, [s for s in inner if s not in idle])
     lines += page.wrap(shown + (f" ({len(idle)} more that never move)" if idle else ""), "nodes   ")

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-import sys
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 
 from prompt_toolkit.application import Application
 from prompt_toolkit.formatted_text import ANSI
@@ -29,16 +29,15 @@ MOVES: dict[tuple[str, ...], Callable[[Walk], None]] = {
 }
 
 
-def walk_through(files: Sequence[Reviewed], failures: list[Failure]) -> None:
+def walk_through(files: Sequence[Reviewed], failures: list[Failure], page: Page) -> None:
     """Show one step after the other, as the keys say, until the reviewer leaves."""
     walk = Walk(failures)
     reasons = {id(file): Reasons(file) for file in files}
-    color = Page.of(sys.stdout).color
 
     def shown() -> ANSI:
         size = application.output.get_size()
-        page = Page(size.columns, color)
-        return ANSI("\n".join(screen(walk, reasons[id(walk.here.file)], page, size.rows)))
+        lines = screen(walk, reasons[id(walk.here.file)], replace(page, width=size.columns), size.rows)
+        return ANSI("\n".join(lines))
 
     window = Window(FormattedTextControl(shown, show_cursor=False), always_hide_cursor=True)
     application: Application[None] = Application(Layout(window), key_bindings=_keys(walk), full_screen=True)
