@@ -5,8 +5,8 @@
 Every contestant answers exactly the same question, in a process of its own that is killed after SECONDS (default 60);
 once it fails at a size, larger ones are not tried. The command prints, for every size, seconds and peak megabytes,
 and how many times longer the best peer took than the best engine; at the end the largest size that each solved.
-Verdicts must be equal, or the command ends with an error. FAMILY: names to run, all of them by default. What was
-killed counts as SECONDS. See README.md beside this file.
+Verdicts must be equal, or the command ends with an error. FAMILY: names to run, all of them by default. See README.md
+beside this file.
 """
 
 from __future__ import annotations
