@@ -11,11 +11,12 @@ import pytest
 from judging import complaints
 from random_circuits import RACY, Question, random_case, random_question
 
-from settled.models.states import Behaviour, Situation
+from settled.models.states import Behaviour, Situation, walk
 from settled.verify.limits import Limits
 
 pytest.importorskip("dd.cudd")
 
+from settled.verify.diagrams import closure  # noqa: E402
 from settled.verify.diagrams.answers import Reading  # noqa: E402
 from settled.verify.diagrams.certificate import scripts  # noqa: E402
 from settled.verify.diagrams.manager import ordered  # noqa: E402
@@ -117,8 +118,11 @@ def test_moves_are_those_of_the_executable_meaning(mode: str, winners: str) -> N
             todo += sorted(fresh)
 
 
+@pytest.mark.parametrize("kept", [3, closure.KEPT])
 @pytest.mark.parametrize("mode", MODES)
-def test_the_reached_set_is_exact_and_its_paths_are_runs(mode: str) -> None:
+def test_the_reached_set_is_exact_and_its_paths_are_runs(mode: str, kept: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Also when few rings are kept and much has to be found again."""
+    monkeypatch.setattr(closure, "KEPT", kept)
     for seed in range(12):
         circuit, environment = random_case(f"reached {seed}", nodes=4, inputs=2, **MODES[mode])
         behaviour = Behaviour(circuit, environment)
@@ -136,6 +140,7 @@ def test_the_reached_set_is_exact_and_its_paths_are_runs(mode: str) -> None:
             word = at.state | at.outstanding << len(circuit.signals)
             path = reading.all.path(word)
             assert path[-1] == word and d.holds(reading.world.start, path[0])
+            walk(behaviour, reading.run("", path))
         signals = circuit.signals
         states = d.without(reading.all.reached, set(d.variables) - set(signals))
         assert d.count(states, signals) == len({at.state for at in expected})

@@ -9,17 +9,20 @@ from __future__ import annotations
 
 from bisect import bisect_left
 from collections.abc import Iterator
+from itertools import pairwise
 
 from settled.verify.diagrams.manager import Diagrams, Set
 from settled.verify.diagrams.moves import Cluster, Move, Moves, Plain
+
+KEPT = 100
 
 
 class Closure:
     """All states that moves lead to from `sources`; or, `backwards`, from which they lead there.
 
     `within`: only moves between states of this set. `until`: the search may end once a state of it is found.
-    `rings`: what had been found after each round; `rounds`: the moves that were applied in it, each to what it had
-    not been applied to before.
+    `rings`: what had been found now and then, after moves were applied one after the other; `rounds`: the moves
+    applied since the ring before. Only so many are kept: every diagram that is kept makes reordering slower.
     """
 
     def __init__(
@@ -39,6 +42,7 @@ class Closure:
         self.rings = [sources & self.within]
         self.rounds: list[tuple[Move, ...]] = [()]
         self._done: dict[Move, Set] = {}
+        self._number = 0
         self._close()
 
     @property
@@ -72,8 +76,9 @@ class Closure:
     def _round(self, moves: tuple[Move, ...]) -> bool:
         """Apply moves one after the other; whether they found anything."""
         reached = self.reached
+        self._number += 1
         for move in moves:
-            self.diagrams.check(f"in round {len(self.rings):,} of the decision diagrams")
+            self.diagrams.check(f"in round {self._number:,} of the decision diagrams")
             fresh = reached & ~self._done[move] if move in self._done else reached
             if fresh != self.diagrams.false:
                 self._done[move] = reached
@@ -82,7 +87,17 @@ class Closure:
             return False
         self.rings.append(reached)
         self.rounds.append(moves)
+        if len(self.rings) > KEPT:
+            self._thin()
         return True
+
+    def _thin(self) -> None:
+        """Keep the first ring, the last and every second one between them."""
+        last = len(self.rings) - 1
+        kept = [*range(0, last, 2), last]
+        joined = [tuple(m for part in self.rounds[a + 1 : b + 1] for m in part) for a, b in pairwise(kept)]
+        self.rings = [self.rings[i] for i in kept]
+        self.rounds = [(), *joined]
 
     def _moved(self, move: Move, f: Set) -> Set:
         if isinstance(move, Cluster):
