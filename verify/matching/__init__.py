@@ -1,0 +1,1 @@
+"""Node correspondences between two circuits: guessed by simulation, chosen to cut all loops, proved by SAT."""
