@@ -51,6 +51,7 @@ def value(circuit: Circuit, expressions: Iterable[Expr], state: int) -> list[int
     return evaluate(circuit.resolve(*expressions), unpack(circuit, state))
 
 
+@lru_cache(maxsize=100_000)
 def excited(circuit: Circuit, state: int) -> int:
     """The packed set of nodes whose excitation differs from their value."""
     values = unpack(circuit, state)
@@ -93,7 +94,6 @@ class Behaviour:
 
     def __init__(self, circuit: Circuit, environment: Environment) -> None:
         self.circuit, self.environment = circuit, environment
-        self.excited = lru_cache(maxsize=100_000)(lambda state: excited(circuit, state))
         self.admits = lru_cache(maxsize=100_000)(self._admits)
 
     @cached_property
@@ -107,6 +107,10 @@ class Behaviour:
 
     def _admits(self, vector: int) -> bool:
         return all(self._assume.run(unpack(self.circuit, vector)))
+
+    def excited(self, state: int) -> int:
+        """The packed set of excited nodes."""
+        return excited(self.circuit, state)
 
     def is_stable(self, state: int) -> bool:
         """Whether no node is excited."""
