@@ -83,8 +83,8 @@ def every_cause(task: Task, question: Question) -> Causes | None:
 def racing(graph: Graph, behaviour: Behaviour) -> Iterator[tuple[str, Failure]]:
     """The failures of all critical races, each with the identity of its cause; short ones first."""
     races = Races(graph)
-    inputs, steps, _ = races.lengths
-    for number in races.numbers[np.lexsort((steps, inputs))].tolist():
+    _, steps = graph.lengths(races.changes.source[races.numbers])
+    for number in races.numbers[np.lexsort((steps, races.inputs))].tolist():
         first, *others = races.endings(number)
         for other in others:
             race = Race(behaviour, graph, [_states(graph, first), _states(graph, other)], 0).facts()["race"]

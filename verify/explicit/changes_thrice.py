@@ -3,16 +3,16 @@ switching circuits", recalled): where the internal states reached differ, the ci
 
 from __future__ import annotations
 
-from functools import cached_property
+from functools import cache
 from typing import NamedTuple
 
 import numpy as np
 
 from settled.encodings.packed import Places, Words
-from settled.verify.explicit.graph import Graph
-from settled.verify.explicit.nearest import Entries, Nearest, joined, pair_sums
+from settled.verify.explicit.graph import MANY, NONE, Graph
+from settled.verify.explicit.nearest import Entries, Nearest, ends_as, following, joined, pair_sums
 from settled.verify.explicit.normal_form import Ways
-from settled.verify.explicit.races import Pair, least_beginnings, least_pair
+from settled.verify.explicit.races import Pair, all_ends, least_beginnings, least_pair
 from settled.verify.explicit.search import Key, Moves, Search
 
 LONG = 1 << 32
@@ -38,13 +38,12 @@ class ThreeChanges:
 
     def least(self) -> Clash | None:
         """The least two runs, over all stable vertices and inputs, that end in different internal states, or None."""
-        bits, pairs = [np.zeros(0, np.int64)], [self._none]
-        for bit in (1 << i for i in range(self.packed.inputs)):
-            pairs.append(self.clashing(bit))
-            bits.append(np.full(len(pairs[-1]) // 2, bit))
-        which, two = np.concatenate(bits), joined(*pairs)
+        bits = [1 << i for i in range(self.packed.inputs)]
+        pairs = [self.clashing(bit) for bit in bits]
+        which = np.repeat(bits, [len(pair) // 2 for pair in pairs])
         if not len(which):
             return None
+        two = joined(*pairs)
         source = two.owner[::2]
         rounds, steps = self.graph.lengths(source)
         inputs = 2 * rounds + pair_sums(two.steps // LONG)
@@ -54,36 +53,54 @@ class ThreeChanges:
         least = least_pair(self.graph, [clash.runs for clash in found])
         return next(clash for clash in found if clash.runs is least)
 
-    @property
-    def _none(self) -> Entries:
-        return Entries(*(np.zeros(0, np.int64) for _ in range(4)))
-
     def clashing(self, bit: int) -> Entries:
         """For one input the stable vertices with two outcomes, each as the owner of two rows.
 
         The changes count among the steps, and once more as `LONG`.
         """
-        once = self._after(bit, self._ends)
-        thrice = once
+        failing = self._failing(bit)
+        if not failing:
+            return Entries(*(np.zeros(0, np.int64) for _ in range(4)))
+        within = following(self.graph, np.array(sorted(self._after(bit).values()), np.int64))
+        ends = ends_as(self.graph, self._internal(self.graph.vertices))
+        thrice = once = self._before(bit, Nearest(self.graph, ends, within))
         for _ in range(2):
-            thrice = self._after(bit, Nearest(self.graph, thrice))
+            thrice = self._before(bit, Nearest(self.graph, thrice, within))
         both = joined(once, thrice)
         changes = np.repeat([LONG, 3 * LONG], [len(once), len(thrice)])
         two = Entries(both.owner, both.label, both.steps + changes, both.nodes).two_each()
-        _, count = np.unique(two.owner, return_counts=True)
-        return two.at(np.flatnonzero(np.repeat(count, count) == 2))
+        return two.at(np.flatnonzero(np.isin(two.owner, failing)))
 
-    def _after(self, bit: int, ends: Nearest) -> Entries:
+    def _failing(self, bit: int) -> list[int]:
+        """The stable vertices from which one change and three changes of an input have more than one outcome."""
+        after, ends = self._after(bit), cache(self._ends)
+        label = self._internal(self.graph.vertices).tolist()
+
+        def change(stable: set[int]) -> set[int]:
+            return {end for s in stable if s in after for end in ends(after[s])}
+
+        found = []
+        for s in after:
+            once = change({s})
+            if len({label[end] for end in once | change(change(once))}) > 1:
+                found.append(s)
+        return found
+
+    def _after(self, bit: int) -> dict[int, int]:
+        """For each stable vertex the vertex just after one input alone has changed."""
+        edges, place = self.graph.change_edges, np.flatnonzero(self.flips == np.uint64(bit))
+        return dict(zip(edges.source[place].tolist(), edges.target[place].tolist(), strict=True))
+
+    def _ends(self, vertex: int) -> list[int]:
+        """The ends of the response from a vertex."""
+        only = int(self.graph.outcome[vertex])
+        return [] if only == NONE else all_ends(self.graph, vertex) if only == MANY else [only]
+
+    def _before(self, bit: int, ends: Nearest) -> Entries:
         """What can be reached by one more change: a row's owner is the stable vertex before it."""
         edges, place = self.graph.change_edges, np.flatnonzero(self.flips == np.uint64(bit))
         rows = ends.of(edges.target[place])
         return Entries(edges.source[place][rows.owner], rows.label, rows.steps + 1, rows.nodes)
-
-    @cached_property
-    def _ends(self) -> Nearest:
-        ends = np.flatnonzero(self.graph.end)
-        nothing = np.zeros(len(ends), np.int64)
-        return Nearest(self.graph, Entries(ends, self._internal(self.graph.vertices[ends]), nothing, nothing))
 
     def _internal(self, words: Words) -> Places:
         """Internal states, as numbers."""

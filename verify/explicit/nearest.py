@@ -6,9 +6,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from settled.encodings.packed import Places
+from settled.encodings.packed import Bits, Places
 from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.normal_form import first_of_each, switchings
+from settled.verify.explicit.search import distinct
 
 FAR = np.int64(1) << 40
 
@@ -55,17 +56,22 @@ def pair_sums(column: Places) -> Places:
 class Nearest:
     """`label[:, k]`, `steps[:, k]`, `nodes[:, k]`: the k-th nearest label (k = 0, 1) of every vertex, -1 if none."""
 
-    def __init__(self, graph: Graph, seeds: Entries) -> None:
-        """Layered search backwards from `seeds`; a vertex passes on only the two nearest labels that it has."""
+    def __init__(self, graph: Graph, seeds: Entries, within: Bits) -> None:
+        """Layered search backwards from `seeds`; a vertex passes on only the two nearest labels that it has.
+
+        `within`: the vertices that matter, closed under steps. Raises `LimitReached`.
+        """
         size = len(graph)
+        seeds = seeds.at(np.flatnonzero(within[seeds.owner]))
         self.label = np.full((size, 2), -1, np.int64)
         self.steps = np.full((size, 2), FAR, np.int64)
         self.nodes = np.full((size, 2), FAR, np.int64)
         wave, steps = seeds.at(np.zeros(0, np.int64)), 0
         while len(wave) or (seeds.steps >= steps).any():
             taken = self._take(joined(wave, seeds.at(np.flatnonzero(seeds.steps == steps))))
-            wave = joined(*(_before(graph, part) for part in _apart(taken)))
+            wave = joined(*(_before(graph, part, within) for part in _apart(taken)))
             steps += 1
+            graph.limits.check(f"at ends {steps} steps away")
 
     def of(self, vertices: Places) -> Entries:
         """The labels of some vertices; the owner of a row is the position in `vertices`."""
@@ -92,16 +98,30 @@ def _apart(entries: Entries) -> tuple[Entries, Entries]:
     return entries.at(np.flatnonzero(first)), entries.at(np.flatnonzero(~first))
 
 
-def _before(graph: Graph, entries: Entries) -> Entries:
+def _before(graph: Graph, entries: Entries, within: Bits) -> Entries:
     """The rows that those of distinct vertices give to the vertices one step before."""
     source, owner = graph.step_edges.into(entries.owner)
+    kept = within[source]
+    source, owner = source[kept], owner[kept]
     place = np.searchsorted(entries.owner, owner)
     more = switchings(graph.packed, graph.vertices[source], graph.vertices[owner])
     return Entries(source, entries.label[place], entries.steps[place] + 1, entries.nodes[place] + more)
 
 
-def nearest_ends(graph: Graph) -> Nearest:
-    """The nearest ends of the response from each vertex; an end's label is its index."""
+def following(graph: Graph, vertices: Places) -> Bits:
+    """Whether each vertex can follow on one of `vertices` in the response, these included."""
+    found = np.zeros(len(graph), bool)
+    fresh = distinct(vertices)
+    while len(fresh):
+        found[fresh] = True
+        _, after = graph.step_edges.out_of(fresh)
+        after = distinct(after)
+        fresh = after[~found[after]]
+    return found
+
+
+def ends_as(graph: Graph, labels: Places) -> Entries:
+    """The ends of all responses, each with its label."""
     ends = np.flatnonzero(graph.end)
     nothing = np.zeros(len(ends), np.int64)
-    return Nearest(graph, Entries(ends, ends, nothing, nothing))
+    return Entries(ends, labels[ends], nothing, nothing)

@@ -11,7 +11,7 @@ import numpy as np
 
 from settled.encodings.packed import Bits, Places, Words
 from settled.verify.explicit.graph import MANY, Graph
-from settled.verify.explicit.nearest import Entries, nearest_ends, pair_sums
+from settled.verify.explicit.nearest import Entries, Nearest, ends_as, following, pair_sums
 from settled.verify.explicit.normal_form import Ways, first_of_each, values
 from settled.verify.explicit.search import Key, Search
 
@@ -68,23 +68,32 @@ class Races:
         return found
 
     @cached_property
-    def lengths(self) -> tuple[Places, Places, Places]:
-        """Of each race the pair's steps that change an input, its steps, and its switchings after the change."""
+    def inputs(self) -> Places:
+        """How many steps change an input in each race, both runs from the start together."""
+        rounds, _ = self.graph.lengths(self.changes.source[self.numbers])
+        return 2 * (rounds + self.changes.inputs[self.numbers])
+
+    def _lengths(self, numbers: Places) -> tuple[Places, Places]:
+        """Of some races the pair's steps from the start together, and its switchings after the change."""
         edges = self.graph.change_edges
-        racing = np.flatnonzero(np.isin(self.changes.group, self.numbers))
-        near = nearest_ends(self.graph).of(edges.target[racing])
+        racing = np.flatnonzero(np.isin(self.changes.group, numbers))
+        within = following(self.graph, edges.target[racing])
+        ends = ends_as(self.graph, np.arange(len(self.graph)))
+        near = Nearest(self.graph, ends, within).of(edges.target[racing])
         owner = self.changes.group[racing][near.owner]
         two = Entries(owner, near.label, near.steps, near.nodes).two_each()
-        rounds, steps = self.graph.lengths(self.changes.source[self.numbers])
-        inputs = 2 * (rounds + self.changes.inputs[self.numbers])
-        return inputs, 2 * (steps + 1) + pair_sums(two.steps), pair_sums(two.nodes)
+        _, steps = self.graph.lengths(self.changes.source[numbers])
+        return 2 * (steps + 1) + pair_sums(two.steps), pair_sums(two.nodes)
 
     def least(self) -> Pair | None:
         """The least pair of runs (as vertices, from the same start state) that end differently, or None."""
         if not len(self.numbers):
             return None
-        numbers, paths = least_beginnings(self.graph, self.changes.source[self.numbers], self.lengths)
-        pairs = [(self.pair(number, path)) for number, path in zip(self.numbers[numbers].tolist(), paths, strict=True)]
+        few = np.flatnonzero(self.inputs == self.inputs.min())
+        numbers = self.numbers[few]
+        lengths = (self.inputs[few], *self._lengths(numbers))
+        kept, paths = least_beginnings(self.graph, self.changes.source[numbers], lengths)
+        pairs = [(self.pair(number, path)) for number, path in zip(numbers[kept].tolist(), paths, strict=True)]
         return least_pair(self.graph, pairs)
 
     def pair(self, number: int, before: Path) -> Pair:
