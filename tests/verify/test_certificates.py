@@ -15,8 +15,7 @@ from settled.verify.engines import reach
 from settled.verify.limits import LimitReached, Limits
 from settled.verify.properties import kinds
 from settled.verify.questions import Reaches, Task
-from settled.verify.rules import Established
-from settled.verify.symbolic.certificates import CertificateFailed, Proof, check, scripts
+from settled.verify.symbolic.certificates import Certificate, CertificateFailed, Proof, Statements, check
 from settled.verify.symbolic.reach import Reacher
 
 LATCH = Circuit(
@@ -47,53 +46,62 @@ def answers(text: str) -> str:
 @pytest.mark.parametrize("kind", ["never", "hazard-free", "settles", "race-free", "speed-independent"])
 def test_another_solver_accepts_the_scripts_of_every_proof(kind: str) -> None:
     count = 0
-    for seed in range(12):
+    for seed in range(25):
         question = random_question(f"scripts {seed}", kind, nodes=4)
-        asked = kinds()[kind].question(question.circuit, question.options)
-        for rule in reach.RULES[type(asked)]:
-            outcome = rule(Reacher(Task(question.circuit, question.environment, Limits())), asked)
-            for proof in outcome.proofs if isinstance(outcome, Established) else ():
-                texts = dict(scripts(proof))
-                assert list(texts) == ["start", "step", "property"]
-                assert {answers(text) for text in texts.values()} == {"unsat"}, (seed, rule.__name__)
-                count += 1
-    assert count > 5
+        task = Task(question.circuit, question.environment, Limits())
+        answer = reach.answer(task, kinds()[kind].question(question.circuit, question.options))
+        assert all(answers(text) == "unsat" for text in answer.scripts.values()), seed
+        count += len(answer.scripts)
+    assert count > 8
 
 
 def test_a_script_tells_which_number_is_which_signal() -> None:
-    texts = dict(scripts(proof_of()))
-    assert texts["step"].splitlines()[:2] == [
-        "; never both: no move leads out of the invariant",
-        "; expected answer: unsat",
-    ]
-    assert "; n2 = q\n" in texts["step"] and "; n2_next = q after\n" in texts["step"]
+    text = dict(Statements(proof_of()).scripts())["step"]
+    assert text.splitlines()[:2] == ["; never both: no move leads out of the invariant", "; expected answer: unsat"]
+    assert "; n2 = q\n" in text and "; n2_next = q after\n" in text
+
+
+def test_what_proofs_share_is_shown_once_and_a_premise_of_the_others() -> None:
+    proof = proof_of()
+    evidence = Certificate(proof.system, proof.clauses, [proof])
+    evidence.check(Limits())
+    assert list(evidence.scripts()) == ["circuit-start", "circuit-step", "part-1-property"]
+    assert evidence.as_data()["clauses"] and evidence.as_data()["parts"][0]["clauses"] == []
 
 
 def test_an_invariant_that_does_not_exclude_the_bad_states_is_refused() -> None:
     with pytest.raises(CertificateFailed, match="`property`"):
-        check(replace(proof_of(), clauses=()), Limits())
+        check(Statements(replace(proof_of(), clauses=())), Limits())
 
 
 def test_an_invariant_that_a_start_state_violates_is_refused() -> None:
     proof = proof_of()
     with pytest.raises(CertificateFailed, match="`start`"):
-        check(replace(proof, clauses=(*proof.clauses, (("q", False),))), Limits())
+        check(Statements(replace(proof, clauses=(*proof.clauses, (("q", False),)))), Limits())
 
 
 def test_an_invariant_that_a_move_leaves_is_refused() -> None:
     proof = proof_of()
     with pytest.raises(CertificateFailed, match="`step`"):
-        check(replace(proof, clauses=(*proof.clauses, (("q", True),))), Limits())
+        check(Statements(replace(proof, clauses=(*proof.clauses, (("q", True),)))), Limits())
+
+
+def test_a_false_premise_is_refused_where_it_is_to_be_shown() -> None:
+    proof = proof_of()
+    with pytest.raises(CertificateFailed, match="own signals"):
+        Certificate(proof.system, [(("q", True),)], [proof]).check(Limits())
 
 
 def test_no_time_left_for_the_check_is_a_limit_and_no_verdict() -> None:
     with pytest.raises(LimitReached, match="while z3 checks"):
-        check(proof_of(), Limits(seconds=-1))
+        check(Statements(proof_of()), Limits(seconds=-1))
 
 
 def test_a_proved_answer_carries_the_invariant_in_words() -> None:
     answer = reach.answer(Task(LATCH, WORLD, Limits()), Reaches(and_(var("q"), var("p"))))
     assert answer.certificate is not None and answer.certificate["kind"] == "inductive invariant"
-    (part,) = answer.certificate["parts"]
-    assert part["claim"] == "no run reaches the state asked for" and part["observers"] == {}
-    assert ["~q", "~p"] in part["clauses"]
+    assert ["~q", "~p"] in answer.certificate["clauses"]
+    assert answer.certificate["parts"] == [
+        {"claim": "no run reaches the state asked for", "observers": {}, "clauses": []}
+    ]
+    assert answer.scripts["part-1-property"].endswith("(check-sat)\n(exit)\n")

@@ -4,14 +4,19 @@ to questions whether a state can be reached. What it proves carries an inductive
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from typing import Any
+
 from settled.encodings.system import TooManyOrders
 from settled.models.logic import Expr, and_, not_, or_
 from settled.verify.engines import Engine
+from settled.verify.limits import LimitReached
 from settled.verify.questions import Answer, Diverges, Flickers, Oscillates, Question, Reaches, Task, undecided
-from settled.verify.rules import Established, Rule, hazards, races, settling, states
-from settled.verify.symbolic.certificates import Proof, check, scripts
+from settled.verify.rules import Established, Outcome, Rule, hazards, races, rings, settling, states
+from settled.verify.symbolic.certificates import Certificate, Proof
 from settled.verify.symbolic.reach import Reacher
 
+SHARE = 0.4
 NAME = "property-directed reachability"
 RULES: dict[type[Question], list[Rule]] = {**states.RULES, **hazards.RULES, **settling.RULES, **races.RULES}
 
@@ -20,8 +25,10 @@ def answer(task: Task, question: Question) -> Answer:
     """Try the rules of the question in turn. Raises `LimitReached`, and `CertificateFailed` for a wrong proof."""
     reacher = Reacher(task)
     try:
-        for rule in RULES[type(question)]:
-            found = rule(reacher, question)
+        if isinstance(question, Flickers | Oscillates):
+            rings.prepare(reacher)
+        for rule, share in shares(RULES[type(question)]):
+            found = attempt(reacher, rule, question, share)
             if isinstance(found, Established):
                 return _proved(reacher, question, found)
             if found is not None:
@@ -31,27 +38,42 @@ def answer(task: Task, question: Question) -> Answer:
     return undecided("none of the rules decides", NAME)
 
 
+def shares(rules: list[Rule]) -> Iterator[tuple[Rule, float]]:
+    """Rules with the share of the time left that each may take: all of it for the last, which decides everything."""
+    return ((rule, 1.0 if rule is rules[-1] else SHARE) for rule in rules)
+
+
+def attempt(reacher: Reacher, rule: Rule, question: Question, share: float) -> Outcome:
+    """What a rule comes to; None when its share of the time is used up. Raises `LimitReached` when all time is."""
+    if share == 1.0:
+        return rule(reacher, question)
+    try:
+        with reacher.within(share):
+            return rule(reacher, question)
+    except LimitReached:
+        reacher.progress.tick()
+        return None
+
+
 def _proved(reacher: Reacher, question: Question, found: Established) -> Answer:
-    for proof in found.proofs:
-        check(proof, reacher.task.limits)
-    certificate = {
-        "kind": "inductive invariant",
-        "rule": found.rule,
-        "parts": [proof.as_data() for proof in found.proofs],
-    }
-    written = {
-        f"{number}-{name}": text for number, proof in enumerate(found.proofs, 1) for name, text in scripts(proof)
-    }
-    exercised = _exercised(reacher, question)
-    return Answer("proved", NAME, exercised=exercised, certificate=certificate, scripts=written)
+    nothing = _nothing_to_range_over(reacher, question)
+    proofs = [*found.proofs, *nothing]
+    certificate: dict[str, Any] = {"kind": "inductive invariant" if proofs else "structure", "rule": found.rule}
+    if not proofs:
+        return Answer("proved", NAME, certificate=certificate)
+    evidence = Certificate(reacher.base, reacher.known, proofs)
+    evidence.check(reacher.task.limits)
+    certificate |= evidence.as_data()
+    return Answer("proved", NAME, exercised=not nothing, certificate=certificate, scripts=evidence.scripts())
 
 
-def _exercised(reacher: Reacher, question: Question) -> bool:
-    """Whether the question had something to range over: a reachable state that shows it."""
+def _nothing_to_range_over(reacher: Reacher, question: Question) -> list[Proof]:
+    """The proof that no reachable state shows that the question had something to range over, if so."""
     wanted = _exercise(reacher, question)
-    return wanted is None or not isinstance(
-        reacher.reach(reacher.base, wanted, "there is nothing to range over"), Proof
-    )
+    if wanted is None:
+        return []
+    found = reacher.reach(reacher.base, wanted, "there is nothing to range over")
+    return [found] if isinstance(found, Proof) else []
 
 
 def _exercise(reacher: Reacher, question: Question) -> Expr | None:

@@ -7,8 +7,8 @@ from dataclasses import replace
 from settled.encodings.monitors import counted
 from settled.encodings.system import Restraint, system
 from settled.models.logic import FALSE, and_, not_, var
-from settled.verify.questions import Flickers
-from settled.verify.rules import Established, Failure, Outcome
+from settled.verify.questions import Flickers, Question
+from settled.verify.rules import Established, Failure, Outcome, Rule
 from settled.verify.symbolic.certificates import Proof
 from settled.verify.symbolic.reach import Reacher, Trail
 
@@ -26,7 +26,7 @@ def observers(reacher: Reacher, question: Flickers) -> Outcome:
         watching, twice = counted(signal, body, reacher.base.rest, 1)
         found = reacher.reach(reacher.base.observed(watching), twice, f"`{signal}` never changes twice in one response")
         if isinstance(found, Trail):
-            return _failure(reacher, found, signal)
+            return _failure(reacher, reacher.shortest(found), signal)
         proofs.append(found)
     return Established(ONCE, tuple(proofs))
 
@@ -47,4 +47,4 @@ def _to_rest(reacher: Reacher, trail: Trail) -> Trail | None:
     return None if isinstance(found, Proof) else found
 
 
-RULES = {Flickers: [observers]}
+RULES: dict[type[Question], list[Rule]] = {Flickers: [observers]}

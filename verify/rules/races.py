@@ -2,24 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import replace
 
 from settled.encodings.system import outstanding, waiting_inputs
 from settled.encodings.twins import PARTED, twin, twins
-from settled.models.logic import Expr, and_, not_, or_, rename, support, var
-from settled.verify.questions import Diverges, Oscillates
-from settled.verify.rules import Established, Failure, Outcome, settling
+from settled.models.states import Behaviour, Run, Situation, members
+from settled.verify.questions import Diverges, Oscillates, Question
+from settled.verify.rules import Established, Failure, Outcome, Rule, rings, settling
 from settled.verify.symbolic.certificates import Proof
 from settled.verify.symbolic.reach import Reacher, Trail, without_repeats
+
+SITUATIONS = 20_000
 
 
 def no_disabling_ring(reacher: Reacher, _: Diverges) -> Outcome:
     """If no reachable total state has a disabling ring, and every run settles, each change has one end.
-
-    A disabling ring is a non-empty set of excited nodes each of which loses its excitation when some other excited
-    member switches; or one node, when the switching of another excited node takes away its excitation and it would
-    not be excited back, had it switched just before. Outstanding inputs of a burst switch and disable as nodes do.
 
     Why it holds: without rings the members of a set that may switch at once may also switch one after the other, so
     single switches decide. Two excited nodes i, j of a state then join again: by switching the other, or, when j
@@ -31,7 +29,7 @@ def no_disabling_ring(reacher: Reacher, _: Diverges) -> Outcome:
     waiting = waiting_inputs(reacher.circuit, reacher.environment)
     if waiting and reacher.environment.assume:
         return None
-    found = reacher.reach(reacher.base, ring(reacher), "no reachable state has a disabling ring")
+    found = rings.search(reacher)
     if isinstance(found, Trail):
         return None
     settled = settles(reacher)
@@ -52,25 +50,56 @@ def settles(reacher: Reacher) -> Established | None:
     return None
 
 
-def ring(reacher: Reacher) -> Expr:
-    """Whether there is a disabling ring: a state, and a choice of its members."""
-    circuit = reacher.circuit
-    waiting = waiting_inputs(circuit, reacher.environment)
-    moves = {**circuit.is_excited, **{x: var(outstanding(x)) for x in waiting}}
-    member = {n: var(f"{n} in ring") for n in circuit.nodes}
-    rules, alone = [], []
-    for n in circuit.nodes:
-        now = moves[n]
-        loses = {s: and_(now, moves[s], not_(_flipped(now, s))) for s in support(now) if s in moves and s != n}
-        taken = or_(*(and_(member[s], lost) for s, lost in loses.items() if s in member))
-        rules.append(or_(not_(member[n]), taken))
-        reads_itself = n in support(circuit.excitation[n])
-        alone += [and_(lost, not_(_flipped(now, s, n))) for s, lost in loses.items() if reads_itself]
-    return or_(and_(or_(*member.values()), *rules), *alone)
+def two_ends_after_a_ring(reacher: Reacher, _: Diverges) -> Outcome:
+    """Where a ring can be reached the response often has two ends; they are looked for step by step from there."""
+    found = rings.search(reacher)
+    if isinstance(found, Proof):
+        return None
+    trail = reacher.shortest(found)
+    last, packed = trail.states[-1], trail.run("").states
+    left = sum(1 << i for i, x in enumerate(reacher.circuit.inputs) if last.get(outstanding(x)))
+    forks = two_ends(reacher, Situation(packed[-1], left))
+    if forks is None:
+        return None
+    name = reacher.circuit.name
+    titles = ("one ordering", "another ordering")
+    runs = (Run(title, (*packed, *rest), None, name) for title, rest in zip(titles, forks, strict=True))
+    return Failure(tuple(runs))
 
 
-def _flipped(e: Expr, *names: str) -> Expr:
-    return rename([e], {n: not_(var(n)) for n in names})[0]
+def two_ends(reacher: Reacher, begin: Situation) -> tuple[list[int], list[int]] | None:
+    """Two runs of the response from a situation that end in different stable states, as the states after it."""
+    behaviour = Behaviour(reacher.circuit, reacher.environment)
+    before: dict[Situation, Situation | None] = {begin: None}
+    ends: list[Situation] = []
+    for at in (queue := [begin]):
+        reacher.progress.tick()
+        if not at.outstanding and behaviour.is_stable(at.state):
+            ends.append(at)
+            if len(ends) == 2:
+                return _back(before, ends[0]), _back(before, ends[1])
+        if len(queue) < SITUATIONS:
+            for then in _one_by_one(behaviour, at):
+                if then not in before:
+                    before[then] = at
+                    queue.append(then)
+    return None
+
+
+def _one_by_one(behaviour: Behaviour, at: Situation) -> Iterator[Situation]:
+    for bit in members(behaviour.excited(at.state)):
+        yield Situation(at.state ^ bit, at.outstanding)
+    for bit, rest in behaviour.arrivals(at):
+        yield Situation(at.state ^ bit, rest)
+
+
+def _back(before: Mapping[Situation, Situation | None], end: Situation) -> list[int]:
+    path = []
+    at: Situation | None = end
+    while at is not None:
+        path.append(at.state)
+        at = before[at]
+    return path[-2::-1]
 
 
 def two_runs(reacher: Reacher, _: Diverges) -> Outcome:
@@ -81,17 +110,17 @@ def two_runs(reacher: Reacher, _: Diverges) -> Outcome:
         return Established(
             "Two runs side by side that part at a change never end in different stable states.", (found,)
         )
-    return _failure(reacher, found)
+    return _failure(reacher, reacher.shortest(found))
 
 
 def _failure(reacher: Reacher, trail: Trail) -> Failure:
     first = trail.run("one ordering")
     names: Mapping[str, str] = {v: twin(v) for v in reacher.circuit.signals if twin(v) in trail.states[0]}
     parted = next(i for i, s in enumerate(trail.states) if s[PARTED])
-    common = Trail(trail.system, trail.states[:parted]).run("").states
-    own = Trail(trail.system, trail.states[parted:]).run("another ordering", names)
+    common = replace(trail, states=trail.states[:parted]).run("").states
+    own = replace(trail, states=trail.states[parted:]).run("another ordering", names)
     second = replace(own, states=without_repeats([*common, *own.states]))
     return Failure((first, second))
 
 
-RULES = {Diverges: [no_disabling_ring, two_runs]}
+RULES: dict[type[Question], list[Rule]] = {Diverges: [no_disabling_ring, two_ends_after_a_ring, two_runs]}

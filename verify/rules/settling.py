@@ -9,8 +9,8 @@ from settled.encodings.monitors import SAVED, counted, returning
 from settled.encodings.system import Restraint, system
 from settled.models.circuit import loops
 from settled.models.logic import TRUE, and_, const, not_, rename, support, var
-from settled.verify.questions import Oscillates
-from settled.verify.rules import Established, Failure, Outcome
+from settled.verify.questions import Oscillates, Question
+from settled.verify.rules import Established, Failure, Outcome, Rule
 from settled.verify.stable_states import Query
 from settled.verify.symbolic.certificates import Proof
 from settled.verify.symbolic.reach import Reacher, Trail
@@ -111,7 +111,7 @@ def no_return(reacher: Reacher, _: Oscillates) -> Outcome:
     found = reacher.reach(made, round_, "no fair run with the inputs held comes back to an unstable state")
     if isinstance(found, Proof):
         return Established("No reachable unstable state comes again by a fair run with the inputs held.", (found,))
-    return _failure(reacher, found)
+    return _failure(reacher, reacher.shortest(found))
 
 
 def _failure(reacher: Reacher, trail: Trail) -> Failure:
@@ -131,4 +131,4 @@ def _ways_out(reacher: Reacher, state: Mapping[str, int]) -> dict[str, bool]:
     return {"some_run_settles": False} if isinstance(found, Proof) else {}
 
 
-RULES = {Oscillates: [no_loops, few_changes, no_loop_goes_round, no_return]}
+RULES: dict[type[Question], list[Rule]] = {Oscillates: [no_loops, few_changes, no_loop_goes_round, no_return]}

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from settled.encodings.dead_ends import dead_end
 from settled.encodings.system import System
 from settled.models.logic import Expr, and_, evaluate, not_, or_, rename, support
 from settled.models.states import Run, excited, members
-from settled.verify.questions import Deadlocks, Reaches, Withdraws
-from settled.verify.rules import DIRECT, Established, Failure, Outcome
+from settled.verify.questions import Deadlocks, Question, Reaches, Withdraws
+from settled.verify.rules import DIRECT, Established, Failure, Outcome, Rule
 from settled.verify.symbolic.certificates import Proof
 from settled.verify.symbolic.reach import Reacher, Trail
 
@@ -31,7 +33,7 @@ def _direct(reacher: Reacher, bad: Expr, what: str) -> Outcome:
     found = reacher.reach(reacher.base, bad, f"no run reaches {what}")
     if isinstance(found, Proof):
         return Established(DIRECT, (found,))
-    return Failure((found.run("the run to it"),))
+    return Failure((reacher.shortest(found).run("the run to it"),))
 
 
 def withdrawal(made: System, excepted: tuple[str, ...] = ()) -> Expr:
@@ -56,7 +58,7 @@ def withdraws(reacher: Reacher, question: Withdraws) -> Outcome:
     found = reacher.reach(made, bad, "no step takes away the excitation of a node that does not switch")
     if isinstance(found, Proof):
         return Established(DIRECT, (found,))
-    return Failure((_with_step(reacher, found, bad, question),))
+    return Failure((_with_step(reacher, reacher.shortest(found), bad, question),))
 
 
 def _with_step(reacher: Reacher, trail: Trail, bad: Expr, question: Withdraws) -> Run:
@@ -68,7 +70,7 @@ def _with_step(reacher: Reacher, trail: Trail, bad: Expr, question: Withdraws) -
     free = {**dict.fromkeys(made.selectors, 0), **{f"{s} follows": last[s] for s in circuit.signals}}
     after = dict(zip(moves, evaluate(list(moves.values()), {**free, **chosen, **last}), strict=True))
     run = trail.run("the run to it")
-    (then,) = Trail(made, ({**last, **after},)).run("").states
+    (then,) = replace(trail, states=({**last, **after},)).run("").states
     return Run(run.title, (*run.states, _fewest(reacher, run.states[-1], then, question)), None, circuit.name)
 
 
@@ -83,4 +85,4 @@ def _fewest(reacher: Reacher, before: int, after: int, question: Withdraws) -> i
     return after
 
 
-RULES = {Reaches: [reaches], Deadlocks: [deadlocks], Withdraws: [withdraws]}
+RULES: dict[type[Question], list[Rule]] = {Reaches: [reaches], Deadlocks: [deadlocks], Withdraws: [withdraws]}

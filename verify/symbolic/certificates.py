@@ -15,7 +15,7 @@ from typing import Any, TypeVar
 from settled.encodings.moves import begins, follows, implies, moves
 from settled.encodings.smtlib import script
 from settled.encodings.system import System, after
-from settled.models.logic import FALSE, Expr, and_, not_, or_, rename, support, to_text, var
+from settled.models.logic import FALSE, TRUE, Expr, and_, not_, or_, rename, support, to_text, var
 from settled.verify.limits import Limits
 
 T = TypeVar("T")
@@ -41,32 +41,35 @@ class Proof:
     clauses: tuple[Clause, ...]
     claim: str
 
-    def as_data(self) -> dict[str, Any]:
-        """For the result document."""
-        return {
-            "claim": self.claim,
-            "observers": {v: to_text(self.system.next_value(v)) for v in self.system.watching},
-            "clauses": [[("" if value else "~") + name for name, value in clause] for clause in self.clauses],
-        }
-
 
 class Statements:
-    """What must have no model for a proof to stand, as expressions; `after(v)` is `v` after the move."""
+    """What must have no model for a proof to stand, as expressions; `after(v)` is `v` after the move.
 
-    def __init__(self, proof: Proof) -> None:
+    `known`: clauses that another proof has shown to hold in every reachable state, with the assumptions; they are
+    premises here. Without them the assumptions are among what is to be shown.
+    """
+
+    def __init__(self, proof: Proof, known: Sequence[Clause] | None = None) -> None:
         self.proof, self.system = proof, proof.system
-        self.clauses = [or_(*(var(v) if bit else not_(var(v)) for v, bit in clause)) for clause in proof.clauses]
+        given = set(known or ())
+        self.own = [clause for clause in proof.clauses if clause not in given]
+        self.clauses = [_expression(clause) for clause in self.own]
+        self.premises = [self.system.always, *(_expression(clause) for clause in known or ())]
+        self.shown = [] if known is not None else [self.system.always]
         self.later = {v: var(after(v)) for v in self.system.variables}
 
     def start(self) -> Expr:
         """A start state outside the invariant."""
-        watching = self.system.start if self.system.watching else not_(FALSE)
-        return and_(begins(self.system.circuit, self.system.environment), watching, not_(self._invariant))
+        watching = self.system.start if self.system.watching else TRUE
+        begun = and_(begins(self.system.circuit, self.system.environment), watching)
+        return and_(begun, not_(and_(*self.shown, *self.clauses)))
 
     def step(self, numbers: Iterable[int]) -> Expr:
         """A move from the invariant that breaks one of the clauses, or the assumptions."""
         system = self.system
-        kept = rename([system.always, *(self.clauses[i] for i in numbers)], self.later)
+        kept = rename([*self.shown, *(self.clauses[i] for i in numbers)], self.later)
+        if not kept:
+            return FALSE
         rules = [moves(system.circuit, system.environment, system.restraint)]
         for v in system.watching:
             zero, one = system.may[v]
@@ -79,7 +82,7 @@ class Statements:
 
     @cached_property
     def _invariant(self) -> Expr:
-        return and_(self.system.always, *self.clauses)
+        return and_(*self.premises, *self.clauses)
 
     def script(self, assertion: Expr, comments: Sequence[str] = ()) -> str:
         """The statement as a script; variables go by number, `n17`, and `n17_next` after the move, choices as `c3`."""
@@ -91,26 +94,65 @@ class Statements:
         table = [f"{names[s]} = {s}" for s in read] if comments else []
         return script([assertion], names, [*comments, *table])
 
-
-def scripts(proof: Proof) -> Iterator[tuple[str, str]]:
-    """The SMT-LIB 2.6 scripts of a proof as (name, text): `start`, `step` and `property`; each must answer `unsat`."""
-    statements = Statements(proof)
-    every = range(len(proof.clauses))
-    parts = {
-        "start": (statements.start(), "every start state satisfies the invariant"),
-        "step": (statements.step(every), "no move leads out of the invariant"),
-        "property": (statements.excluded(proof.bad), "the invariant excludes what must not be"),
-    }
-    for name, (assertion, words) in parts.items():
-        yield name, statements.script(assertion, [f"{proof.claim}: {words}", "expected answer: unsat"])
+    def scripts(self) -> Iterator[tuple[str, str]]:
+        """The statements by name as scripts; what is trivial is left out."""
+        parts = {
+            "start": (self.start(), "every start state satisfies the invariant"),
+            "step": (self.step(range(len(self.clauses))), "no move leads out of the invariant"),
+            "property": (self.excluded(self.proof.bad), "the invariant excludes what must not be"),
+        }
+        for name, (assertion, words) in parts.items():
+            if assertion is not FALSE:
+                yield name, self.script(assertion, [f"{self.proof.claim}: {words}", "expected answer: unsat"])
 
 
-def check(proof: Proof, limits: Limits) -> None:
+def _expression(clause: Clause) -> Expr:
+    return or_(*(var(v) if bit else not_(var(v)) for v, bit in clause))
+
+
+class Certificate:
+    """Proofs about one circuit; what they share, clauses over its own variables, is shown once."""
+
+    def __init__(self, base: System, known: Sequence[Clause], proofs: Sequence[Proof]) -> None:
+        shared = Proof(base, FALSE, tuple(known), "the clauses over the circuit's own signals")
+        self.statements = {"circuit": Statements(shared)}
+        self.statements |= {f"part-{i}": Statements(proof, known) for i, proof in enumerate(proofs, 1)}
+
+    def check(self, limits: Limits) -> None:
+        """Let z3 confirm everything. Raises `CertificateFailed`, and `LimitReached` when time is up."""
+        for statements in self.statements.values():
+            check(statements, limits)
+
+    def scripts(self) -> dict[str, str]:
+        """SMT-LIB 2.6 scripts by name, each to answer `unsat`; a part's assume what those of the circuit show."""
+        parts = self.statements.items()
+        return {f"{part}-{name}": text for part, statements in parts for name, text in statements.scripts()}
+
+    def as_data(self) -> dict[str, Any]:
+        """For the result document: the shared clauses, and of each part its claim, observers and further clauses."""
+        shared, *parts = self.statements.values()
+        return {
+            "clauses": _texts(shared.own),
+            "parts": [
+                {
+                    "claim": part.proof.claim,
+                    "observers": {v: to_text(part.system.next_value(v)) for v in part.system.watching},
+                    "clauses": _texts(part.own),
+                }
+                for part in parts
+            ],
+        }
+
+
+def _texts(clauses: Iterable[Clause]) -> list[list[str]]:
+    return [[("" if value else "~") + name for name, value in clause] for clause in clauses]
+
+
+def check(statements: Statements, limits: Limits) -> None:
     """Let z3 confirm a proof. Raises `CertificateFailed`, and `LimitReached` when time is up.
 
     What the clauses near by suffice for is confirmed piece by piece; the rest as a whole.
     """
-    statements = Statements(proof)
     near = Near(statements, limits)
     parts = {
         "start": statements.start(),
@@ -118,8 +160,9 @@ def check(proof: Proof, limits: Limits) -> None:
         "property": statements.excluded(near.bad_left()),
     }
     for name, assertion in parts.items():
-        if not impossible(statements.script(assertion), limits):
-            raise CertificateFailed(f"`{proof.claim}`: the statement `{name}` of the invariant does not hold")
+        if assertion is not FALSE and not impossible(statements.script(assertion), limits):
+            claim = statements.proof.claim
+            raise CertificateFailed(f"`{claim}`: the statement `{name}` of the invariant does not hold")
 
 
 def impossible(text: str, limits: Limits) -> bool:
@@ -144,27 +187,29 @@ class Near:
     moves only that a node that moves takes the value of its excitation."""
 
     def __init__(self, statements: Statements, limits: Limits) -> None:
-        self.statements, self.proof, self.limits = statements, statements.proof, limits
-        self.excitation = self.proof.system.circuit.excitation
+        self.statements, self.limits = statements, limits
+        self.excitation = statements.system.circuit.excitation
+        self.premises = [*statements.premises, *statements.clauses]
         self.about: dict[str, list[int]] = defaultdict(list)
-        for i, clause in enumerate(self.proof.clauses):
-            for name, _ in clause:
+        for i, clause in enumerate(self.premises):
+            for name in support(clause):
                 self.about[name].append(i)
 
     def clauses_left(self) -> list[int]:
         """Numbers of the clauses that a move might break, for all that is known near them."""
         left: list[int] = []
-        for batch in batched(range(len(self.proof.clauses)), BATCH):
-            names = sorted({name for i in batch for name, _ in self.proof.clauses[i]})
-            rules = [follows(self.proof.system.circuit, n) for n in names if n in self.excitation]
-            kept = rename([self.statements.clauses[i] for i in batch], self.statements.later)
+        for batch in batched(range(len(self.statements.clauses)), BATCH):
+            clauses = [self.statements.clauses[i] for i in batch]
+            names = support(*clauses)
+            rules = [follows(self.statements.system.circuit, n) for n in names if n in self.excitation]
+            kept = rename(clauses, self.statements.later)
             if not self._impossible(names, and_(*rules, not_(and_(*kept)))):
                 left += batch
         return left
 
     def bad_left(self) -> Expr:
         """The alternatives of the bad states that are not excluded by what is known near them."""
-        bad = self.proof.bad
+        bad = self.statements.proof.bad
         left: list[Expr] = []
         for batch in batched(bad.args if bad.op == "or" else (bad,), BATCH):
             if not self._impossible(support(*batch), or_(*batch)):
@@ -174,7 +219,7 @@ class Near:
     def _impossible(self, names: Sequence[str], assertion: Expr) -> bool:
         read = {*names, *support(*(self.excitation[n] for n in names if n in self.excitation))}
         near = sorted({i for name in read for i in self.about.get(name, ())})
-        text = self.statements.script(and_(*(self.statements.clauses[i] for i in near), assertion))
+        text = self.statements.script(and_(*(self.premises[i] for i in near), assertion))
         return impossible(text, self.limits)
 
 

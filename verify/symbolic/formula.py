@@ -17,7 +17,7 @@ from settled.verify.limits import Limits
 
 Cube = tuple[int, ...]
 
-SOLVER, STEADY_SOLVER = "glucose4", "cadical153"
+SOLVER, STEADY_SOLVER = "minisat22", "cadical153"
 CONFLICTS = 2_000
 
 

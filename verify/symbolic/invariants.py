@@ -7,12 +7,13 @@ A guess is never believed: what is returned has been shown to hold in all start 
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Collection, Hashable, Iterator, Sequence
+from collections.abc import Collection, Hashable, Iterator, Mapping, Sequence
+from dataclasses import replace
 from itertools import combinations, product
 
 import numpy as np
 
-from settled.encodings.system import System
+from settled.encodings.system import System, system
 from settled.models.logic import rename, support, var
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
 from settled.verify.symbolic.local import Local
@@ -36,20 +37,24 @@ def guessed(made: System, progress: Progress) -> list[Cube]:
     formula = Formula(made)
     progress.at("random runs")
     near = neighbourhoods(made)
-    runs = Simulation(made, starts(formula, progress), progress)
+    runs = Simulation(_eager(made), starts(formula, progress), progress)
     samples = np.concatenate(runs.explore(_alike(made, near)), axis=1)
     runs.spread(WIDTH)
-    cubes, apart = unseen(near, samples), 3
-    while cubes:
+    cubes = unseen(near, samples)
+    for apart in (3, 6, 12, 24):
         more = runs.sample(MOMENTS, apart)
+        samples = np.concatenate([samples, more], axis=1)
         left = _left(cubes, more)
-        samples, apart = np.concatenate([samples, more], axis=1), 2 * apart
-        if len(left) >= STEADY * len(cubes):
+        steady = len(left) >= STEADY * len(cubes)
+        cubes = left if steady else unseen(near, samples)
+        if steady:
             break
-        cubes = unseen(near, samples)
-    else:
-        return []
-    return _kept(formula, near, samples, left, progress)
+    return _kept(formula, near, samples, cubes, progress)
+
+
+def _eager(made: System) -> System:
+    """The system with any number of nodes switching at once: its runs get about sooner, and show no less."""
+    return system(replace(made.circuit, winners="any", exclusive=()), made.environment)
 
 
 def _kept(
@@ -194,11 +199,28 @@ def _left(cubes: Sequence[Cube], samples: Words) -> list[Cube]:
 def inductive(formula: Formula, cubes: Sequence[Cube], given: Sequence[Cube], progress: Progress) -> list[Cube]:
     """Of the cubes a large set that no start state is in and into which no step leads from outside it.
 
-    `given`: clauses that are inductive already. A cube stays while it is refuted by what stands near it, all other
-    cubes that are left being excluded; when one goes, those that were refuted with its help are looked at again.
+    `given`: clauses that are inductive already.
     """
     at_start = Query(formula, progress, [[formula.start]], steady=True)
-    kept = dict.fromkeys(_closed(at_start, cubes))
+    kept = _closed(at_start, cubes, {lit: lit for lit in formula.may})
+    reduce = _by_rounds if len(formula.state) <= SHARED else _by_neighbours
+    return reduce(formula, kept, given, progress)
+
+
+def _by_rounds(formula: Formula, cubes: list[Cube], given: Sequence[Cube], progress: Progress) -> list[Cube]:
+    """The greatest such set: while a step from outside all cubes that are left leads into some, drop these."""
+    while True:
+        steps = Query(formula, progress, [*given, *map(negated, cubes)], steady=True)
+        kept = _closed(steps, cubes, formula.may)
+        if len(kept) == len(cubes):
+            return kept
+        cubes = kept
+
+
+def _by_neighbours(formula: Formula, cubes: list[Cube], given: Sequence[Cube], progress: Progress) -> list[Cube]:
+    """A cube stays while what stands near it refutes a step into it; when one goes, those that were refuted with its
+    help are looked at again. The work grows with the number of cubes alone."""
+    kept = dict.fromkeys(cubes)
     local = Local(formula, [*given, *map(negated, kept)])
     used_by: dict[Cube, set[Cube]] = defaultdict(set)
     todo = list(kept)
@@ -216,17 +238,18 @@ def inductive(formula: Formula, cubes: Sequence[Cube], given: Sequence[Cube], pr
     return list(kept)
 
 
-def _closed(query: Query, cubes: Sequence[Cube]) -> list[Cube]:
-    """The cubes that no model is in; a model speaks against every cube that it is in."""
-    broken = np.zeros(len(cubes), bool)
-    for i, cube in enumerate(cubes):
-        if not broken[i] and query.solve(cube):
-            model = set(query.model())
-            broken[[k for k in range(i, len(cubes)) if model.issuperset(cubes[k])]] = True
-    query.close()
-    return [cube for cube, gone in zip(cubes, broken, strict=True) if not gone]
-
-
 def negated(cube: Cube) -> Cube:
     """The clause that excludes a cube, and the other way round."""
     return tuple(-lit for lit in cube)
+
+
+def _closed(query: Query, cubes: Sequence[Cube], becomes: Mapping[int, int]) -> list[Cube]:
+    """The cubes whose literals cannot all become true; a model speaks against every cube that it shows."""
+    literals = [[becomes[lit] for lit in cube] for cube in cubes]
+    broken = np.zeros(len(cubes), bool)
+    for i, wanted in enumerate(literals):
+        if not broken[i] and query.solve(wanted):
+            model = set(query.model())
+            broken[[k for k in range(i, len(cubes)) if model.issuperset(literals[k])]] = True
+    query.close()
+    return [cube for cube, gone in zip(cubes, broken, strict=True) if not gone]

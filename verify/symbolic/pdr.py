@@ -9,6 +9,7 @@ literals is a generalised cube already.
 
 from __future__ import annotations
 
+from collections import defaultdict
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from heapq import heappop, heappush
@@ -17,7 +18,7 @@ from settled.models.logic import Expr, support
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
 
 RETIRED = 1_000
-DROPS = 12
+DROPS = 40
 
 
 @dataclass(frozen=True)
@@ -64,6 +65,8 @@ class Pdr:
         self.start = Query(self.formula, progress, [[self.formula.start], *self.seeds])
         self.lifting = Query(self.formula, progress)
         self.frames = [Frame(self.start)]
+        self._last: dict[Cube, int] = {}
+        self._about: dict[int, set[Cube]] = defaultdict(set)
         self._free = self._choices(bad)
 
     def _choices(self, bad: Expr) -> list[int]:
@@ -187,21 +190,42 @@ class Pdr:
         frame.query.close()
         frame.query, frame.retired = self._solver(self.frames.index(frame)), 0
 
-    def _learn(self, at: int, cube: Cube, since: int = 1) -> None:
-        """Exclude a cube from the frames up to `at`; those before `since` exclude it already."""
-        members = set(cube)
+    def _learn(self, at: int, cube: Cube) -> None:
+        """Exclude a cube from the frames up to `at`, and forget the cubes within it that are known for no more."""
+        within = set.intersection(*(self._about[lit] for lit in cube))
+        for inner in [c for c in within if self._last[c] <= at]:
+            self._forget(inner)
         for frame in self.frames[1 : at + 1]:
-            frame.cubes = {c for c in frame.cubes if not members.issubset(c)}
-        for frame in self.frames[since : at + 1]:
             frame.query.add([-lit for lit in cube])
+        self._keep(at, cube)
+
+    def _forget(self, cube: Cube) -> None:
+        self.frames[self._last.pop(cube)].cubes.discard(cube)
+        for lit in cube:
+            self._about[lit].discard(cube)
+
+    def _keep(self, at: int, cube: Cube) -> None:
+        self._last[cube] = at
         self.frames[at].cubes.add(cube)
+        for lit in cube:
+            self._about[lit].add(cube)
+
+    def _move(self, cube: Cube) -> None:
+        """A cube is excluded from one more frame."""
+        at = self._last[cube]
+        self.frames[at].cubes.discard(cube)
+        self.frames[at + 1].query.add([-lit for lit in cube])
+        self._keep(at + 1, cube)
 
     def _propagate(self) -> list[Cube] | None:
         """Move clauses on to the frames after; the clauses of an inductive frame when there is one."""
         for at in range(1, len(self.frames) - 1):
             for cube in sorted(self.frames[at].cubes):
                 if cube in self.frames[at].cubes and (core := self._inductive(at + 1, cube)) is not None:
-                    self._learn(at + 1, core, since=at + 1 if core == cube else 1)
+                    if core == cube:
+                        self._move(cube)
+                    else:
+                        self._learn(at + 1, core)
             if not self.frames[at].cubes:
                 return [c for frame in self.frames[at + 1 :] for c in frame.cubes]
         return None
@@ -226,11 +250,11 @@ class Pdr:
         states = [self._state(self.start.model())]
         at = obligation.then
         while at is not None:
-            states.append(self._move(states[-1], at.cube))
+            states.append(self._step(states[-1], at.cube))
             at = at.then
         return Path(tuple(states))
 
-    def _move(self, state: Cube, target: Cube) -> Cube:
+    def _step(self, state: Cube, target: Cube) -> Cube:
         """A state of `target` one step after `state` in which nothing moves that need not."""
         may = self.formula.may
         found = self.lifting.solve([*state, *(may[lit] for lit in target)])

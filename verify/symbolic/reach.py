@@ -2,23 +2,29 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass, replace
 from functools import cached_property
+from typing import Any
 
 from settled.encodings.system import System, system
 from settled.models.logic import Expr, or_, support
 from settled.models.states import Run
+from settled.verify.limits import LimitReached
 from settled.verify.questions import Task
 from settled.verify.symbolic.certificates import Clause, Proof
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
 from settled.verify.symbolic.invariants import RINGS, guessed
 from settled.verify.symbolic.local import Local
-from settled.verify.symbolic.pdr import Invariant, Pdr
+from settled.verify.symbolic.pdr import Invariant, Path, Pdr
+from settled.verify.symbolic.unrolling import shorter
 
 State = Mapping[str, int]
 
 LARGE = 24
+UNROLLED = 1_000_000
+SHORTENING = 0.2
 
 
 @dataclass(frozen=True)
@@ -27,6 +33,7 @@ class Trail:
 
     system: System
     states: tuple[State, ...]
+    bad: Expr
 
     def run(self, title: str, name: Mapping[str, str] | None = None) -> Run:
         """The circuit's total states along the trail, each once; `name` renames its signals."""
@@ -48,6 +55,10 @@ def _numbered(made: System, clause: Clause) -> Cube:
     return tuple(made.number[v] if bit else -made.number[v] for v, bit in clause)
 
 
+def _trail(made: System, path: Path, bad: Expr) -> Trail:
+    return Trail(made, tuple({v: int(bit) for v, bit in _named(made, state)} for state in path.states), bad)
+
+
 class Reacher:
     """Puts questions about one task to the search."""
 
@@ -55,18 +66,34 @@ class Reacher:
         self.task = task
         self.circuit, self.environment = task.circuit, task.environment
         self.progress = Progress(task.limits)
+        self.memory: dict[str, Any] = {}
+        self._known: Sequence[Clause] | None = None
 
     @cached_property
     def base(self) -> System:
         """The system of the task without observers."""
         return system(self.circuit, self.environment)
 
-    @cached_property
-    def known(self) -> list[Clause]:
-        """Clauses over the circuit's own variables that are true in every reachable state and inductive together."""
-        if len(self.circuit.nodes) < LARGE:
-            return []
-        return [_named(self.base, clause) for clause in guessed(self.base, self.progress)]
+    @property
+    def known(self) -> Sequence[Clause]:
+        """Clauses over the circuit's own variables that are true in every reachable state and inductive together.
+
+        Guessed at first; each proof about the circuit without observers adds what it rests on.
+        """
+        if self._known is None:
+            large = len(self.circuit.nodes) >= LARGE
+            self._known = [_named(self.base, c) for c in guessed(self.base, self.progress)] if large else ()
+        return self._known
+
+    @contextmanager
+    def within(self, share: float) -> Iterator[None]:
+        """Work for a share of the time that is left; what was not decided by then raises `LimitReached`."""
+        limits = self.progress.limits
+        self.progress.limits = replace(limits, seconds=limits.spent() + share * limits.left())
+        try:
+            yield
+        finally:
+            self.progress.limits = limits
 
     def reach(self, made: System, bad: Expr, claim: str) -> Proof | Trail:
         """Decide whether a state with `bad` true can be reached. Raises `LimitReached`.
@@ -77,12 +104,15 @@ class Reacher:
         formula = Formula(made)
         seeds = [_numbered(made, clause) for clause in self.known]
         open_ = self._open(formula, bad, seeds)
-        if not open_:
-            return Proof(made, bad, tuple(_named(made, clause) for clause in seeds), claim)
-        found = Pdr(formula, or_(*open_), self.progress, seeds).run()
-        if isinstance(found, Invariant):
-            return Proof(made, bad, tuple(_named(made, clause) for clause in found.clauses), claim)
-        return Trail(made, tuple({v: int(bit) for v, bit in _named(made, state)} for state in found.states))
+        found: Invariant | Path = Invariant(tuple(seeds))
+        if open_:
+            found = Pdr(formula, or_(*open_), self.progress, seeds).run()
+        if isinstance(found, Path):
+            return _trail(made, found, bad)
+        clauses = tuple(_named(made, clause) for clause in found.clauses)
+        if made is self.base:
+            self._known = clauses
+        return Proof(made, bad, clauses, claim)
 
     def _open(self, formula: Formula, bad: Expr, seeds: list[Cube]) -> list[Expr]:
         """The alternatives of `bad` that known clauses near them do not exclude."""
@@ -98,6 +128,20 @@ class Reacher:
             if local.refutation([lit], RINGS) is None:
                 found.append(e)
         return found
+
+    def shortest(self, trail: Trail) -> Trail:
+        """A trail with the fewest steps to a bad state, when it is found in time; else the trail itself."""
+        formula = Formula(trail.system)
+        steps = len(trail.states) - 1
+        if formula.count * steps > UNROLLED:
+            return trail
+        try:
+            with self.within(SHORTENING):
+                path = shorter(formula, trail.bad, steps, self.progress)
+        except LimitReached:
+            self.progress.tick()
+            return trail
+        return trail if path is None else _trail(trail.system, path, trail.bad)
 
     def choices(self, made: System, state: State, condition: Expr) -> dict[str, int]:
         """Selectors and other choices in `condition` with which it is true in a state."""

@@ -23,7 +23,7 @@ Bits = npt.NDArray[np.bool_]
 
 FULL = np.uint64(0xFFFF_FFFF_FFFF_FFFF)
 FEWEST = 128
-STEPS = 50_000
+STEPS = 5_000
 KEPT = 64
 
 
