@@ -86,13 +86,14 @@ class Statements:
 
     def script(self, assertion: Expr, comments: Sequence[str] = ()) -> str:
         """The statement as a script; variables go by number, `n17`, and `n17_next` after the move, choices as `c3`."""
-        names = {}
-        for i, v in enumerate(self.system.variables):
-            names[v], names[after(v)] = f"n{i}", f"n{i}_next"
-        read = support(assertion)
-        names |= {s: f"c{i}" for i, s in enumerate(s for s in read if s not in names)}
-        table = [f"{names[s]} = {s}" for s in read] if comments else []
+        names = {s: self._numbers.get(s) or f"c{i}" for i, s in enumerate(support(assertion))}
+        table = [f"{number} = {s}" for s, number in names.items()] if comments else []
         return script([assertion], names, [*comments, *table])
+
+    @cached_property
+    def _numbers(self) -> dict[str, str]:
+        now = {v: f"n{i}" for i, v in enumerate(self.system.variables)}
+        return now | {after(v): f"{number}_next" for v, number in now.items()}
 
     def scripts(self) -> Iterator[tuple[str, str]]:
         """The statements by name as scripts; what is trivial is left out."""
