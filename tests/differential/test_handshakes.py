@@ -10,10 +10,11 @@ from collections import Counter
 import oracle
 import oracle_traces
 import pytest
-from judging import complaints, session_of
+from judging import ask_only, complaints, session_of
 from random_circuits import random_question
 
 from settled.models.specification import Property
+from settled.verify.engines import exhaustive
 from settled.verify.explicit import fair_cycles
 from settled.verify.result import document
 from settled.verify.session import Settings
@@ -66,6 +67,7 @@ def test_a_search_that_was_cut_short_proves_nothing_and_refutes_nothing_that_hol
     for seed in range(100):
         case = random_question(f"short {seed}", check, winners="one")
         session = session_of(*case[:2], (Property("cut", check, case.options),), Settings(states=12))
+        ask_only(session, exhaustive.NAME)
         (result,) = session.results()
         verdicts[result.verdict] += 1
         if result.verdict != "undecided":

@@ -40,8 +40,8 @@ def session_of(
 def ask_only(session: Session, name: str) -> None:
     """Let one engine answer every question of a session."""
     (engine,) = [e for e in engines() if e.name == name]
-    environment = session.specification.environment
-    session.ask = lambda circuit, question: attempt(engine, Task(circuit, environment, Limits()), question)
+    environment, states = session.specification.environment, session.settings.states
+    session.ask = lambda circuit, question: attempt(engine, Task(circuit, environment, Limits(states=states)), question)
 
 
 def complaints(
