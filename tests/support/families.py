@@ -55,7 +55,7 @@ def ripple_counter(stages: int) -> tuple[Circuit, Environment]:
         clock = var(f"f{i}z")
     outputs = tuple(f"f{i}q" for i in range(stages))
     circuit = Circuit(f"ripple counter of {stages}", ("clk",), tuple(excitation), excitation, outputs)
-    return circuit, Environment(start={"clk": 0} | {q: 0 for q in outputs})
+    return circuit, Environment(start={"clk": 0} | dict.fromkeys(outputs, 0))
 
 
 def latch_chain(length: int) -> tuple[Circuit, Environment]:

@@ -176,4 +176,3 @@ def _recheck(task: Task, question: StableCount, cover: Cover) -> None:
 
 
 ENGINE = Engine(NAME, rank=5, answers={StableCount: count})
-
