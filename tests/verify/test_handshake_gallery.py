@@ -84,7 +84,7 @@ def test_every_handshake_file_is_in_the_table() -> None:
     [
         ("handshake_half_buffer_split", "speed-independent", ["keep"]),
         ("handshake_c_element_hasty", "speed-independent", ["ka", "kb"]),
-        ("handshake_arbiter", "no choice at all", ["to_radio"]),
+        ("handshake_arbiter", "no choice at all", ["to_recorder"]),
     ],
 )
 def test_the_refutation_names_who_lost_its_excitation(name: str, prop: str, withdrawn: list[str]) -> None:
