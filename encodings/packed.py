@@ -22,6 +22,7 @@ Bits = npt.NDArray[np.bool_]
 Places = npt.NDArray[np.int64]
 
 WIDTH = 63
+PLACES = np.left_shift(1, np.arange(8)).astype(np.uint8)
 BURST_INPUTS = 12
 
 
@@ -45,7 +46,8 @@ class Packed:
             raise TooWide(f"bursts of {self.inputs} inputs under assumptions; at most {BURST_INPUTS} inputs fit")
         self.input_mask = np.uint64((1 << self.inputs) - 1)
         self.state_mask = np.uint64((1 << self.state_bits) - 1)
-        self._excited = Program([circuit.is_excited[n] for n in circuit.nodes])
+        self.node_mask = self.state_mask ^ self.input_mask
+        self._targets = Program([circuit.excitation[n] for n in circuit.nodes])
         self._assume = Program(circuit.resolve(*environment.assume))
         guards = [environment.guard(name) for name in circuit.inputs]
         self._rises = Program(circuit.resolve(*(g.rises for g in guards)))
@@ -53,16 +55,15 @@ class Packed:
 
     def values(self, program: Program, vertices: Words) -> list[Any]:
         """Values of a program's roots in each vertex, as arrays of bits (or one bit for a constant)."""
-        place = self.circuit.place
-        words = {s: (vertices >> np.uint64(place[s])) & np.uint64(1) != 0 for s in program.reads}
-        return program.run(words, np.True_)
+        rows = bits_of(vertices)
+        return program.run_in_order([rows[self.circuit.place[s]] for s in program.reads], np.True_)
 
     def mask(self, bits: Sequence[Any], vertices: Words, shift: int = 0) -> Words:
         """Pack arrays of bits into words, the first at position `shift`."""
-        total = np.zeros(len(vertices), np.uint64)
+        rows = np.zeros((64, len(vertices)), bool)
         for i, column in enumerate(bits):
-            total |= np.asarray(column, np.uint64) << np.uint64(i + shift)
-        return total
+            rows[i + shift] = column
+        return words_of(rows)
 
     def holds(self, expressions: Iterable[Expr], vertices: Words) -> Bits:
         """Whether all `expressions` (over any signals) are true in each vertex."""
@@ -77,11 +78,12 @@ class Packed:
 
     def excited(self, vertices: Words) -> Words:
         """The packed set of excited nodes of each vertex."""
-        return self.mask(self.values(self._excited, vertices), vertices, self.inputs)
+        targets = self.mask(self.values(self._targets, vertices), vertices, self.inputs)
+        return (targets ^ vertices) & self.node_mask
 
-    def movers(self, vertices: Words) -> Words:
-        """The packed set of nodes that may switch in each vertex."""
-        return self.excited(vertices)
+    def movers(self, excited: Words) -> Words:
+        """The packed set of nodes that may switch, of those that are excited, for each vertex."""
+        return excited
 
     def admits(self, vertices: Words) -> Bits:
         """Whether the input vector of each vertex satisfies the assumptions."""
@@ -117,7 +119,7 @@ class Packed:
         return result
 
     def steps(self, vertices: Words, movers: Words) -> tuple[Places, Words]:
-        """Every step that is not the environment's own choice of a change; `movers` is `movers(vertices)`."""
+        """Every step that is not the environment's own choice of a change; `movers`: the nodes that may switch."""
         if not self.fundamental:
             source, target = self.held(vertices, movers | self.allowed(vertices))
             lawful = self.admits(target)
@@ -187,6 +189,22 @@ class Packed:
                     table[rest] |= table[rest ^ 1 << i][vectors.astype(np.int64) ^ 1 << i]
             table[rest] &= admitted
         return table
+
+
+def bits_of(words: Words) -> Bits:
+    """A row for each of the 64 bits, a column for each word."""
+    octets = np.ascontiguousarray(words.astype("<u8").view(np.uint8).reshape(-1, 8).T)
+    rows: Bits = (octets[:, None, :] & PLACES[:, None]).reshape(64, -1) != 0
+    return rows
+
+
+def words_of(rows: Bits) -> Words:
+    """The words whose bits stand in 64 rows."""
+    bits = rows.view(np.uint8).reshape(8, 8, -1)
+    octets = bits[:, 0].copy()
+    for place in range(1, 8):
+        octets |= bits[:, place] << np.uint8(place)
+    return np.ascontiguousarray(octets.T).view("<u8").reshape(-1).astype(np.uint64)
 
 
 def one_of(vertices: Words, movers: Words) -> tuple[Places, Words]:

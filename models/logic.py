@@ -6,8 +6,10 @@ them goes through `fold`, which does not recurse: a chain of 100,000 gates is as
 
 from __future__ import annotations
 
+import operator
 import re
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from functools import reduce
 from typing import Any, TypeVar
 from weakref import WeakValueDictionary
 
@@ -138,16 +140,8 @@ def fold(roots: Sequence[Expr], visit: Callable[[Expr, list[T]], T]) -> list[T]:
     return [done[r] for r in roots]
 
 
-def combine(e: Expr, v: list[Any], one: Any) -> Any:
-    """The value of an operator from its operands' words; `one` is the word of all ones."""
-    if e.op == "not":
-        return v[0] ^ one
-    if e.op == "ite":
-        return (v[0] & v[1]) | ((v[0] ^ one) & v[2])
-    total = v[0]
-    for word in v[1:]:
-        total = total & word if e.op == "and" else total | word if e.op == "or" else total ^ word
-    return total
+ZERO, ONE = 0, 1
+"""Where a program keeps the words of all zeros and of all ones."""
 
 
 class Program:
@@ -155,25 +149,40 @@ class Program:
 
     def __init__(self, roots: Sequence[Expr]) -> None:
         order = list(topological(roots))
-        place = {e: i for i, e in enumerate(order)}
+        self.reads = [e.name for e in order if e.op == "var"]
+        self._lines: list[tuple[Callable[[Any, Any], Any], int, int]] = []
+        place = {FALSE: ZERO, TRUE: ONE} | {e: 2 + i for i, e in enumerate(e for e in order if e.op == "var")}
         for e in order:
             if e.op in ("stable", "excited"):
                 raise ValueError(f"`{to_text(e)}` must be resolved against a circuit first")
-        self._lines = [(e, [place[a] for a in e.args]) for e in order]
+            if e.args:
+                place[e] = self._compiled(e.op, [place[a] for a in e.args])
         self._roots = [place[r] for r in roots]
-        self.reads = [e.name for e in order if e.op == "var"]
+
+    def _compiled(self, op: str, args: list[int]) -> int:
+        """Append what computes an operator from the values at `args`; the place of its value."""
+        if op == "not":
+            return self._line(operator.xor, args[0], ONE)
+        if op == "ite":
+            chosen = self._line(operator.and_, args[0], args[1])
+            other = self._line(operator.and_, self._line(operator.xor, args[0], ONE), args[2])
+            return self._line(operator.or_, chosen, other)
+        function = {"and": operator.and_, "or": operator.or_, "xor": operator.xor}[op]
+        return reduce(lambda total, place: self._line(function, total, place), args)
+
+    def _line(self, function: Callable[[Any, Any], Any], first: int, second: int) -> int:
+        self._lines.append((function, first, second))
+        return 1 + len(self.reads) + len(self._lines)
 
     def run(self, values: Mapping[str, Any], one: Any = 1) -> list[Any]:
         """The roots' values; see `evaluate`."""
-        zero = one ^ one
-        done: list[Any] = []
-        for e, args in self._lines:
-            if e.op == "var":
-                done.append(values[e.name])
-            elif e.op == "const":
-                done.append(one if e is TRUE else zero)
-            else:
-                done.append(combine(e, [done[a] for a in args], one))
+        return self.run_in_order([values[name] for name in self.reads], one)
+
+    def run_in_order(self, values: Iterable[Any], one: Any = 1) -> list[Any]:
+        """The roots' values, given those of the signals in the order of `reads`."""
+        done = [one ^ one, one, *values]
+        for function, first, second in self._lines:
+            done.append(function(done[first], done[second]))
         return [done[r] for r in self._roots]
 
 

@@ -62,5 +62,13 @@ class Limits:
 
 
 def peak_megabytes() -> float:
-    """The most memory that this process has had, in megabytes."""
-    return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / UNIT
+    """The most memory that this process has had, in megabytes; read ten times a second, as asking takes long."""
+    global _peak
+    now = time.monotonic()
+    if now >= _peak[0] + 0.1:
+        _peak = now, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / UNIT
+    return _peak[1]
+
+
+_peak = (-1.0, 0.0)
+"""When the peak was last read, and what it was."""

@@ -112,9 +112,9 @@ class Moving(Packed):
         super().__init__(circuit, environment)
         self.moving = np.uint64(moving)
 
-    def movers(self, vertices: Words) -> Words:
+    def movers(self, excited: Words) -> Words:
         """The nodes that may switch in each vertex."""
-        return super().movers(vertices) & self.moving
+        return excited & self.moving
 
     def allowed(self, vertices: Words) -> Words:
         """The inputs that may change in each vertex."""

@@ -85,5 +85,3 @@ def check_cells(lines: list[Spot], cells: Mapping[str, tuple[str, ...]]) -> None
             if names & set(members) and not names <= set(members):
                 message = f"the cell `{cell}` parts the two grants of the arbiter `{line.name}`"
                 line.problem("conflict", message, "its grants sit side by side", at_key=True)
-
-

@@ -112,23 +112,25 @@ class Graph:
 
     def moves(self, vertices: Words) -> tuple[Places, Words]:
         """Every move: steps, and changes that the environment makes of its own accord."""
-        parts = self.steps(vertices), self.changes(vertices)
+        excited = self.packed.excited(vertices)
+        parts = self.steps(vertices, excited), self.changes(vertices, excited)
         return np.concatenate([parts[0][0], parts[1][0]]), np.concatenate([parts[0][1], parts[1][1]])
 
-    def steps(self, vertices: Words) -> tuple[Places, Words]:
-        """Steps of the response (in input-output mode: every step)."""
-        movers = self.packed.movers(vertices)
+    def steps(self, vertices: Words, excited: Words | None = None) -> tuple[Places, Words]:
+        """Steps of the response (in input-output mode: every step); `excited`: if known, what is in each vertex."""
+        movers = self.packed.movers(self.packed.excited(vertices) if excited is None else excited)
         if not self.packed.fundamental:
             movers = movers | self.packed.allowed(vertices)
         return self._blockwise(self.packed.steps, vertices, movers)
 
     def held(self, vertices: Words) -> tuple[Places, Words]:
         """Steps of the nodes alone, the inputs held."""
-        return self._blockwise(self.packed.held, vertices, self.packed.movers(vertices))
+        return self._blockwise(self.packed.held, vertices, self.packed.movers(self.packed.excited(vertices)))
 
-    def changes(self, vertices: Words) -> tuple[Places, Words]:
+    def changes(self, vertices: Words, excited: Words | None = None) -> tuple[Places, Words]:
         """Changes that the environment may make in the vertices among `vertices` that admit one."""
-        place = np.flatnonzero(self.packed.ends(vertices, self.packed.excited(vertices)))
+        excited = self.packed.excited(vertices) if excited is None else excited
+        place = np.flatnonzero(self.packed.ends(vertices, excited))
         stable = vertices[place]
         source, target = self._blockwise(lambda v, _: self.packed.changes(v), stable, self.packed.allowed(stable))
         return place[source], target

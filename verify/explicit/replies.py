@@ -128,11 +128,11 @@ class Responses(Graph):
         source, target = self.serial.steps(here, self.packed.excited(here)) if self.serial else super().held(here)
         return idle[source], target
 
-    def steps(self, vertices: Words) -> tuple[Places, Words]:
+    def steps(self, vertices: Words, excited: Words | None = None) -> tuple[Places, Words]:
         """Steps of the response: of the nodes, and what comes next on the agenda."""
         if self.serial is None:
-            return super().steps(vertices)
-        source, target = self.serial.steps(vertices, self.packed.excited(vertices))
+            return super().steps(vertices, excited)
+        source, target = self.serial.steps(vertices, self.packed.excited(vertices) if excited is None else excited)
         place, arrived = self.packed.arrivals(vertices)
         return np.concatenate([source, place]), np.concatenate([target, arrived])
 
