@@ -1,8 +1,9 @@
 """Engines side by side under one limit of time and memory: the first decision wins, the losers are stopped.
 
 A small circuit is decided at once by the engines at home, which keep what they explored for the next property. What
-they leave open goes to the engines apart, each in a process of its own, while the engines at home go on under the
-full limits. With one job everything comes one after the other, each engine apart with a share of the time.
+they leave open after so many states or seconds goes to the engines apart, each in a process of its own, while the
+engines at home go on under the full limits. With one job everything comes one after the other, each engine apart with
+a share of the time.
 """
 
 from __future__ import annotations
@@ -22,6 +23,7 @@ from settled.verify.limits import LimitReached
 from settled.verify.questions import Answer, Question, Task, undecided
 
 QUICK = 20_000
+SOON = 2.0
 GRACE = 2.0
 
 
@@ -39,8 +41,10 @@ def decide(task: Task, question: Question, jobs: int) -> Answer:
     apart = [e for e in able(question) if e.apart]
     if not apart:
         return at_home(task, question, home, [])
-    states = min(QUICK, task.limits.states)
-    answer = at_home(replace(task, limits=replace(task.limits, states=states)), question, home, [])
+    limits = task.limits
+    soon = min(limits.seconds, limits.spent() + SOON)
+    quick = replace(limits, states=min(QUICK, limits.states), seconds=soon)
+    answer = at_home(replace(task, limits=quick), question, home, [])
     if answer.verdict != "undecided":
         return answer
     if jobs == 1:

@@ -8,7 +8,7 @@ from typing import Any
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
-from settled.models.logic import Expr, to_text
+from settled.models.logic import Expr, and_, not_, support, to_text, var
 
 
 def to_property_file(
@@ -43,9 +43,23 @@ def table(name: str, content: Mapping[str, Any]) -> list[str]:
 
 def _circuit(name: str, circuit: Circuit) -> Iterator[str]:
     yield from table(name, {"inputs": circuit.inputs, "outputs": circuit.outputs, "winners": circuit.winners})
-    yield from table(f"{name}.excitation", circuit.excitation)
+    granted = {g for pair in circuit.exclusive for g in pair}
+    plain = {n: e for n, e in circuit.excitation.items() if n not in granted}
+    if circuit.exclusive:
+        elements = enumerate(circuit.exclusive)
+        yield from table(f"{name}.arbiters", {f"ME{i}": _arbiter(circuit, pair) for i, pair in elements})
+    if plain:
+        yield from table(f"{name}.excitation", plain)
     if circuit.defined:
         yield from table(f"{name}.define", circuit.defined)
+
+
+def _arbiter(circuit: Circuit, pair: tuple[str, str]) -> Mapping[str, Any]:
+    """Two grants that exclude one another, each by its request and the absence of the other."""
+    requests = [next(r for r in support(circuit.excitation[g]) if r not in pair) for g in pair]
+    for own, other, request in zip(pair, reversed(pair), requests, strict=True):
+        assert circuit.excitation[own] is and_(var(request), not_(var(other))), f"{own} is no grant"
+    return {"requests": requests, "grants": pair}
 
 
 def _environment(circuit: Circuit, environment: Environment) -> Iterator[str]:
