@@ -17,14 +17,17 @@ STDIN = "-"
 def locate(name: str) -> tuple[str, str | None]:
     """The path that `name` stands for and, of standard input, the text. Raises `InputError`.
 
-    A bare name of no file here, with or without `.toml`, is looked up in the gallery.
+    A bare name of no file here, with or without `.toml`, is looked up in the gallery; a directory, such as `--out`
+    may have made under the name, does not hide it.
     """
     if name == STDIN:
         return STDIN, _standard_input()
-    if os.path.basename(name) != name or os.path.lexists(name):
+    if os.path.basename(name) != name or (os.path.lexists(name) and not os.path.isdir(name)):
         return name, None
     known = gallery()
     if name not in known:
+        if os.path.isdir(name):
+            return name, None
         message = f"there is neither a file nor a gallery file `{name}`"
         help = nearest(name, [*os.listdir(), *known])
         raise InputError(Problem("file-not-found", message, Span(name, 1, 1), help=help))

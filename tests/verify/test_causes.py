@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from importlib.resources import files
 from typing import Any
 
@@ -114,7 +115,7 @@ def test_every_failing_change_has_a_cause_and_every_cause_is_a_failure(kind: str
         assert result.facts["causes_reason"] is None
         assert result.traces == alone.traces and causes[0]["id"] == alone.facts["cause"]
         assert len({cause["id"] for cause in causes}) == len(causes)
-        written = [trace for trace in document_of(circuit, environment, kind, options, result)["traces"]]
+        written = document_of(circuit, environment, kind, options, result)["traces"]
         for cause in causes:
             traces = [written[i] for i in cause["traces"]]
             assert oracle_traces.offending(circuit, environment, kind, options, traces, cause) is None
@@ -172,7 +173,7 @@ def test_an_identity_survives_what_does_not_concern_it() -> None:
 def test_all_on_the_command_line_in_text_and_in_the_document() -> None:
     shown = CliRunner().invoke(app, ["check", "--all", "--only", "hazard-free", "-"], input=LATCH)
     assert shown.exit_code == 1
-    assert "cause 1 of 2, " in shown.stdout and ", explains 1 input change" in shown.stdout
+    assert re.search(r"cause [0-9a-f]{8} \(1 of 2\), explains 1 input change\n", shown.stdout)
     assert shown.stdout.count("did not wait for") == 2
     written = json.loads(CliRunner().invoke(app, ["check", "--all", "--json", "-"], input=LATCH).stdout)
     schema = json.loads(files("settled.verify").joinpath("result.schema.json").read_text())

@@ -126,6 +126,13 @@ def test_a_file_here_comes_before_the_gallery(files: Path) -> None:
     assert run("check", "wake_latch.toml").exit_code == 1
 
 
+def test_a_directory_here_does_not_hide_the_gallery(files: Path) -> None:
+    for _ in range(2):
+        assert run("check", "level_latch_cured", "--out", "level_latch_cured", "--only", "settles").exit_code == 0
+    (files / "other").mkdir()
+    assert "`other` is a directory, not a file" in run("check", "other").stderr
+
+
 def test_an_unknown_name_gets_the_nearest_one(files: Path) -> None:
     assert "did you mean `wake_latch`?" in run("check", "wake_lach").stderr
 

@@ -17,6 +17,7 @@ from settled.verify import check
 from settled.verify.inputs import gallery
 from settled.verify.renderers.report_html import files, to_html
 from settled.verify.result import FileReport, Result, Step, Trace
+from settled.verify.session import Session, Settings, load
 
 NAMES = ("level_latch", "sample_flip_flop_wires", "wake_latch_unruled", "clock_switch_plain", "level_latch_cured")
 HOSTILE = """
@@ -41,7 +42,9 @@ TROUBLE = ("Log.entryAdded", "Runtime.exceptionThrown", "Runtime.consoleAPICalle
 
 @pytest.fixture(scope="module")
 def reports() -> list[FileReport]:
-    return [*(check(gallery()[name]) for name in NAMES), check("hostile.toml", text=HOSTILE)]
+    every = Session(load(gallery()["clock_switch_plain"]), Settings(every=True))
+    causes = every.report(list(every.results()))
+    return [*(check(gallery()[name]) for name in NAMES), causes, check("hostile.toml", text=HOSTILE)]
 
 
 @pytest.fixture(scope="module")
@@ -105,12 +108,13 @@ def test_every_step_of_every_run_is_there(page: Page, reports: list[FileReport],
                     b => [b.firstChild.textContent, b.querySelector('b').textContent]))])))"""
     )
     results = [result for report in reports for result in report.results]
-    assert len(shown) == len(results) and any(result.traces for result in results)
+    assert len(shown) == len(results) and any(result.further for result in results)
     for rows, result in zip(shown, results, strict=True):
         found = {(run, step): bits for run, step, bits in rows}
-        assert len(found) == len(rows) == sum(len(trace.steps) for trace in result.traces)
+        traces = (*result.traces, *result.further)
+        assert len(found) == len(rows) == sum(len(trace.steps) for trace in traces)
         for (run, number), bits in found.items():
-            step = result.traces[run].steps[number]
+            step = traces[run].steps[number]
             expected = {n: f"{v}{'*' if n in step.excited else ''}" for n, v in step.state.items()}
             assert bits.items() <= expected.items() and set(step.excited) <= bits.keys()
 
@@ -131,7 +135,7 @@ def test_the_controls_work_by_keyboard_alone(page: Page, written: Path) -> None:
     assert page.evaluate(f"document.querySelector('#{article} h3').textContent").startswith("race-free")
     for _ in range(200):
         page.press("Tab")
-        if page.evaluate(f"document.activeElement.matches('#{article} [data-run=\"0\"] [data-go=\"first\"]')"):
+        if page.evaluate(f'document.activeElement.matches(\'#{article} [data-run="0"] [data-go="first"]\')'):
             break
     page.press("Enter")
     assert here(page, article) == ["0 1:0"] and page.evaluate(output)[0] == "Step 0 of 3; start; stable"
@@ -176,6 +180,16 @@ def test_both_schemes_are_readable(page: Page, written: Path) -> None:
 def plain(html: str) -> str:
     """What a page says, without its marks, styles and scripts."""
     return re.sub(r"<[^>]+>", " ", re.sub(r"<(style|script)>.*?</\1>", "", html, flags=re.S))
+
+
+def test_each_cause_stands_with_its_identity_and_its_fault(reports: list[FileReport]) -> None:
+    (result,) = [r for report in reports for r in report.results if len(r.facts.get("causes", ())) > 1]
+    said = " ".join(plain(to_html(reports)).split())
+    for number, cause in enumerate(result.facts["causes"], 1):
+        heading = f"Cause {cause['id']} ({number} of {len(result.facts['causes'])}), explains"
+        assert heading in said
+        told = said[said.index(heading) :]
+        assert f"{cause['fault']['late']} was late" in told[: told.index("waveform")]
 
 
 def test_it_says_what_a_review_needs(reports: list[FileReport]) -> None:

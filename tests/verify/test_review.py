@@ -182,7 +182,7 @@ def test_from_failure_to_failure(result: Path) -> None:
     for _ in range(5):
         walk.next(1)
     assert (walk.failure, walk.said) == (3, "there is no further failure")
-    assert walk.here.heading.startswith("cause 2 of 2, ")
+    assert "(2 of 2), explains 1 input change" in walk.here.heading
     for _ in range(5):
         walk.next(-1)
     assert (walk.failure, walk.said) == (0, "this is the first failure")

@@ -21,9 +21,10 @@ from settled.models.states import Run
 from settled.verify import check
 from settled.verify.inputs import gallery
 from settled.verify.questions import Reaches
+from settled.verify.renderers.cause_text import groups
 from settled.verify.renderers.test_bench import NEEDED, files, to_verilog
 from settled.verify.result import FileReport, Result, trace
-from settled.verify.session import Settings
+from settled.verify.session import Session, Settings, load
 
 pytestmark = needs_simulator
 
@@ -83,6 +84,16 @@ def test_failures_of_other_properties_are_shown_too(name: str, tmp_path: Path) -
             assert complaint(report, result, run_bench(text, tmp_path)) is None, seed
             shown += 1
     assert shown >= 4
+
+
+def test_each_cause_has_a_bench_that_shows_it(tmp_path: Path) -> None:
+    session = Session(load(gallery()["clock_switch_plain"]), Settings(every=True, only=["hazard-free"]))
+    report = session.report(list(session.results()))
+    causes = [group for _, group in groups(report.results[0])]
+    written = files([report], {})
+    assert len(written) == len(causes) > 1
+    for group, text in zip(causes, written.values(), strict=True):
+        assert complaint(report, group, run_bench(text, tmp_path)) is None
 
 
 def test_two_circuits_that_differ_are_seen_to_differ(tmp_path: Path) -> None:

@@ -11,6 +11,7 @@ from settled.verify import check
 from settled.verify.inputs import gallery
 from settled.verify.renderers.waveform import files, to_vcd
 from settled.verify.result import FileReport, Result, Step, Trace
+from settled.verify.session import Session, Settings, load
 
 Samples = list[dict[str, int]]
 
@@ -102,3 +103,25 @@ def test_files_of_properties_and_files_with_like_names_stay_apart() -> None:
     first = ["A-b", "a-b_2-1", "a-b_2-2", "unnamed", "script", "x" * 60]
     wanted = [f"{folder}/{name}.vcd" for folder in ("same", "same_2") for name in first]
     assert list(files(reports, {})) == wanted
+
+
+def test_files_of_a_numbered_name_do_not_meet_those_of_a_property_with_several_runs() -> None:
+    trace = Trace("one", "c", (Step({"q": 0}, (), (), True),))
+    results = tuple(
+        Result(name, "never", "refuted", "", "", 0.0, traces=(trace,) * count) for name, count in (("a", 2), ("a-1", 1))
+    )
+    report = FileReport("a.toml", "", None, None, (), results)  # type: ignore[arg-type]
+    assert list(files([report], {})) == ["a/a-1.vcd", "a/a-2.vcd", "a/a-1_2.vcd"]
+
+
+def test_every_cause_has_its_dumps() -> None:
+    session = Session(load(gallery()["clock_switch_plain"]), Settings(every=True, only=["hazard-free"]))
+    report = session.report(list(session.results()))
+    (result,) = report.results
+    written = files([report], {})
+    traces = (*result.traces, *result.further)
+    assert [name.split("/")[1] for name in written] == [f"hazard-free-cause-{i + 1}.vcd" for i in range(len(traces))]
+    assert len(traces) > 1
+    for trace, text in zip(traces, written.values(), strict=True):
+        assert read_back(text) == expected(trace, list(range(len(trace.steps))))
+        assert "was late" in text

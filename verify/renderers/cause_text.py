@@ -12,26 +12,25 @@ Facts = Mapping[str, Any]
 
 
 def faults(result: Result) -> list[str]:
-    """The decision that is the fault of a race or hazard in one sentence, of each cause where all are listed."""
+    """The ordering decision that is the fault of a race or hazard, in sentences; none where causes are listed."""
     if result.facts.get("causes"):
-        return [f"{heading}: {fault}" for heading, group in groups(result) for fault in _fault(group)]
-    return [f"the fault: {fault}" for fault in _fault(result)]
-
-
-def _fault(result: Result) -> list[str]:
+        return []
+    named = f"; cause {result.facts['cause']}" if "cause" in result.facts else ""
     if "race" in result.facts:
-        return [_race(result.facts, [trace.title for trace in result.traces])]
-    return [_hazard(result.facts)] if "fault" in result.facts else []
+        fault, decided = _race(result.facts, [trace.title for trace in result.traces])
+        return [f"the fault: {fault}{named}", decided]
+    return [f"the fault: {_hazard(result.facts)}{named}"] if "fault" in result.facts else []
 
 
-def _race(facts: Facts, titles: Sequence[str]) -> str:
+def _race(facts: Facts, titles: Sequence[str]) -> tuple[str, str]:
     race = facts["race"]
     early, late = race["events"]["early"], race["events"]["late"]
-    decided = [f"{title} by step {step}" for title, step in zip(titles, facts["decided_at"], strict=True)]
+    place = f"{titles[race['trace']]}, step {race['step']}"
+    one, two = (f"{title} by step {step}" for title, step in zip(titles, facts["decided_at"], strict=True))
     return (
-        f"after {facts['change']}, {race['late']} was late: {early} did not wait for {late} "
-        f"({titles[race['trace']]}, step {race['step']}); both paths start from {race['fork'].replace('/', ' and ')}; "
-        f"decided: {decided[0]}, {decided[1]}"
+        f"after {facts['change']}, {race['late']} was late: {early} did not wait for {late} ({place}); "
+        f"both paths start from {race['fork'].replace('/', ' and ')}",
+        f"decided: {one}, {two}; from there on each can only end as it does",
     )
 
 
@@ -47,14 +46,17 @@ def _hazard(facts: Facts) -> str:
 
 
 def groups(result: Result) -> Iterator[tuple[str, Result]]:
-    """Each cause of a result that lists them: a heading, and the result as of this cause alone."""
+    """What is shown one after the other: the result itself, or each cause as a result with its heading."""
+    if not result.facts.get("causes"):
+        yield "", result
+        return
     causes, shown = result.facts["causes"], (*result.traces, *result.further)
     for number, cause in enumerate(causes, 1):
         changes = "1 input change" if cause["explains"] == 1 else f"{cause['explains']:,} input changes"
         traces = tuple(shown[i] for i in cause["traces"])
-        heading = f"cause {number} of {len(causes)}, {cause['id']}, explains {changes}"
+        heading = f"cause {cause['id']} ({number} of {len(causes)}), explains {changes}"
         yield heading, replace(result, claim=cause["claim"], traces=traces, facts=_own(cause))
 
 
 def _own(cause: Facts) -> Facts:
-    return {k: v for k, v in cause.items() if k not in ("id", "explains", "claim", "traces")}
+    return {k: v for k, v in cause.items() if k not in ("id", "cause", "explains", "claim", "traces")}

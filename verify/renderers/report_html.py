@@ -6,7 +6,7 @@ What stands on the page is put together here; how it looks is in `report.html.ji
 from __future__ import annotations
 
 from base64 import b64encode
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from hashlib import sha256
 from importlib.metadata import version
@@ -16,11 +16,12 @@ from typing import Any
 from settled.models.circuit import Circuit
 from settled.models.logic import support
 from settled.verify.questions import Reaches
-from settled.verify.renderers import table_drawing, text
+from settled.verify.renderers import cause_text, table_drawing, text
 from settled.verify.renderers.bench_checks import shows
-from settled.verify.renderers.file_names import numbered, stems
+from settled.verify.renderers.file_names import numbered, pieces, stems
 from settled.verify.renderers.page import visible
-from settled.verify.renderers.timing_diagram import Lanes, Stretch, pieces
+from settled.verify.renderers.timing_diagram import Lanes, Stretch
+from settled.verify.renderers.timing_diagram import pieces as drawings
 from settled.verify.renderers.trace_text import Row, beginning, rows
 from settled.verify.result import FileReport, Result, Step, Trace, circuits
 
@@ -89,6 +90,18 @@ class Group:
 
 
 @dataclass(frozen=True)
+class Evidence:
+    """The runs of a refutation, or of one cause of it: heading and claim of the cause, its fault, files beside it."""
+
+    heading: str
+    claim: str
+    faults: list[str]
+    groups: list[Group]
+    waveforms: list[str]
+    bench: str | None
+
+
+@dataclass(frozen=True)
 class Item:
     """One property on the page."""
 
@@ -97,9 +110,7 @@ class Item:
     sign: str
     basis: str
     remarks: list[str]
-    groups: list[Group]
-    waveforms: list[str]
-    bench: str | None
+    evidence: list[Evidence]
 
 
 @dataclass(frozen=True)
@@ -148,28 +159,39 @@ def _sheets(reports: Sequence[FileReport]) -> list[Sheet]:
 
 
 def _item(report: FileReport, result: Result, stem: str, anchor: str) -> Item:
+    given = cause_text.faults(result)
     return Item(
         anchor=anchor,
         result=result,
         sign=SIGNS[result.verdict],
         basis=text.basis(result, report.circuit),
-        remarks=text.remarks(result, report.circuit),
-        groups=_groups(report, result),
-        waveforms=[f"{name}.vcd" for name in numbered(stem, len(result.traces))] if result.traces else [],
-        bench=f"{stem}.v" if shows(result) else None,
+        remarks=[remark for remark in text.remarks(result, report.circuit) if remark not in given],
+        evidence=list(_evidence(report, result, stem)) if result.traces else [],
     )
 
 
-def _groups(report: FileReport, result: Result) -> list[Group]:
+def _evidence(report: FileReport, result: Result, stem: str) -> Iterator[Evidence]:
+    number = 0
+    for own, heading, found in pieces(result, stem):
+        claim = found.claim if found.claim != result.claim else ""
+        names = [f"{name}.vcd" for name in numbered(own, len(found.traces))]
+        bench = f"{own}.v" if shows(found) else None
+        yield Evidence(heading, claim, cause_text.faults(found), _groups(report, found, number), names, bench)
+        number += len(found.traces)
+
+
+def _groups(report: FileReport, result: Result, first: int) -> list[Group]:
+    """The runs of a result by circuit; `first`: the number of the first run among all of the property."""
     known = circuits(report, result)
     alike: dict[tuple[str, ...], list[int]] = {}
     for number, trace in enumerate(result.traces):
         alike.setdefault((trace.circuit, *trace.steps[0].state), []).append(number)
-    return [_group(report, result, known[key[0]], numbers) for key, numbers in alike.items()]
+    return [_group(report, result, known[key[0]], numbers, first) for key, numbers in alike.items()]
 
 
-def _group(report: FileReport, result: Result, circuit: Circuit, numbers: Sequence[int]) -> Group:
-    traces = [result.traces[n] for n in numbers]
+def _group(report: FileReport, result: Result, circuit: Circuit, places: Sequence[int], first: int) -> Group:
+    traces = [result.traces[place] for place in places]
+    numbers = [first + place for place in places]
     common = beginning(traces) if len(traces) > 1 else 0
     shown, idle = _parted(traces, circuit)
     view = _View(result, circuit, shown)
@@ -225,8 +247,8 @@ class _View:
             run=runs[0] if common is not None else None,
             length=len(trace.steps),
             parting=common - 1 if common else None,
-            wide=pieces(stretch, WIDE),
-            narrow=pieces(stretch, NARROW) if last - first > NARROW else [],
+            wide=drawings(stretch, WIDE),
+            narrow=drawings(stretch, NARROW) if last - first > NARROW else [],
             lines=[
                 self._line(trace, row, i, names)
                 for i, row in enumerate(taken, len(found[:common]) if common else first)

@@ -14,7 +14,8 @@ from typing import Any
 
 from settled.models.logic import support
 from settled.verify.renderers.bench_checks import Check, TimedRun, check, shown, shows
-from settled.verify.renderers.file_names import stems
+from settled.verify.renderers.cause_text import faults
+from settled.verify.renderers.file_names import pieces, stems
 from settled.verify.renderers.verilog_text import comment, expression, fresh, identifier
 from settled.verify.result import FileReport, Result, Trace, circuits
 from settled.verify.timing import schedule
@@ -47,7 +48,7 @@ def _head(report: FileReport, result: Result, runs: Sequence[TimedRun]) -> list[
     name = result.name if result.name == result.check else f"{result.name} ({result.check})"
     lines = [
         comment(f"Test bench for the refuted property {name} of {report.file}"),
-        comment(result.claim),
+        *map(comment, [result.claim, *faults(result)]),
         comment(f"Circuit {circuit.name} under {circuit.delay} delays. Prints FAIL when it shows the failure."),
         comment("Time units mean nothing by themselves: the delays only put the events in their order."),
         comment("Events that stand together are meant to happen at the very same moment."),
@@ -57,7 +58,7 @@ def _head(report: FileReport, result: Result, runs: Sequence[TimedRun]) -> list[
         events = [f"{t} {_events(run, a, b)}" for t, (a, b) in zip(times[1:], pairwise(positions), strict=True)]
         lines += ["//", comment(f"{run.instance}: {run.trace.title}. {NEEDED[run.schedule.kind]}")]
         lines += [f"//   {comment(event)[3:]}" for event in ["0 let go", *events]]
-    return [*lines, '`begin_keywords "1364-2005"', "`timescale 1ns / 100ps", ""]
+    return [*lines, '`begin_keywords "1364-2005"', "`timescale 1s / 100ms", ""]
 
 
 def _changed(trace: Trace, before: int, after: int, signals: Sequence[str]) -> list[str]:
@@ -170,8 +171,12 @@ def _bench(runs: Sequence[TimedRun], found: Check, start: int) -> Iterator[str]:
 
 
 def files(reports: Sequence[FileReport], _: Mapping[str, Any]) -> dict[str, str]:
-    """A bench for each property that has one."""
-    made = {f"{stem}.v": to_verilog(report, result) for report, result, stem in stems(reports)}
+    """A bench for each property that has one, for every cause where all are listed."""
+    made = {
+        f"{own}.v": to_verilog(report, group)
+        for report, result, stem in stems(reports)
+        for own, _, group in pieces(result, stem)
+    }
     return {path: text for path, text in made.items() if text is not None}
 
 

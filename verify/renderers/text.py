@@ -50,7 +50,8 @@ def _causes(result: Result, circuit: Circuit, page: Page) -> list[str]:
     lines = []
     for heading, group in cause_text.groups(result):
         lines += ["", *(page.paint("strong", line) for line in page.wrap(heading, MARGIN))]
-        lines += page.wrap(group.claim, MARGIN, MARGIN + "  ") if group.claim != result.claim else []
+        for said in [*([group.claim] if group.claim != result.claim else []), *cause_text.faults(group)]:
+            lines += page.wrap(said, MARGIN, MARGIN + "  ")
         lines += ["", *tables(group, circuit, page, MARGIN)]
     return lines
 

@@ -84,7 +84,7 @@ def rows(trace: Trace, result: Result, circuit: Circuit) -> tuple[Row, ...]:
     found = []
     for i, step in enumerate(trace.steps):
         entered = events(step, step.switched) if i else begin
-        found.append(Row(i, step, entered, _note(i, step, result, circuit)))
+        found.append(Row(i, step, entered, _note(i, trace, result, circuit)))
     if trace.loop is not None:
         found.append(_return(trace, trace.loop, circuit))
     return tuple(found)
@@ -95,11 +95,14 @@ def events(step: Step, switched: Sequence[str]) -> str:
     return "/".join(f"{name}{'+' if step.state[name] else '-'}" for name in switched)
 
 
-def _note(number: int, step: Step, result: Result, circuit: Circuit) -> str:
-    again = "hazard" in result.facts and number == result.facts.get("offending_step")
+def _note(number: int, trace: Trace, result: Result, circuit: Circuit) -> str:
+    facts, step = result.facts, trace.steps[number]
+    hazard = "hazard" in facts and trace is result.traces[-1]
+    decided = {id(t): place for t, place in zip(result.traces, facts.get("decided_at") or (), strict=False)}
     said = [
         "input change" if any(name in circuit.inputs for name in step.switched) else "",
-        f"{result.facts['hazard']['signal']} changes again" if again else "",
+        f"{facts['hazard']['signal']} changes again" if hazard and number == facts.get("offending_step") else "",
+        "decided" if number == decided.get(id(trace)) else "",
         "stable" if step.stable else "",
     ]
     return ", ".join(filter(None, said))

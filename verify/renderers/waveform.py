@@ -1,6 +1,6 @@
 """Waveforms: a value change dump (IEEE 1364) of each run, for the viewer that people already have.
 
-Untimed runs take one time unit a step. A loop is gone round twice and closed.
+Untimed runs take one second a step, which nobody takes for a delay. A loop is gone round twice and closed.
 """
 
 from __future__ import annotations
@@ -9,7 +9,8 @@ import io
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from settled.verify.renderers.file_names import numbered, stems
+from settled.verify.renderers.cause_text import faults
+from settled.verify.renderers.file_names import numbered, pieces, stems
 from settled.verify.renderers.verilog_text import fresh, unbroken
 from settled.verify.result import FileReport, Result, Trace
 from settled.verify.timing import unroll
@@ -22,8 +23,9 @@ def to_vcd(trace: Trace, result: Result) -> str:
     from vcd import VCDWriter
 
     out = io.StringIO()
-    note = " ".join(f"{result.name}: {trace.title}. {_clock(trace)}".replace("$end", "$ end").split())
-    writer = VCDWriter(out, timescale="1 ns", date="none", comment=_ascii(note), version="settled")
+    said = ". ".join([f"{result.name}: {trace.title}", *faults(result), _clock(trace)])
+    note = " ".join(said.replace("$end", "$ end").split())
+    writer = VCDWriter(out, timescale="1 s", date="none", comment=_ascii(note), version="settled")
     scope = unbroken(trace.circuit or "circuit")
     step = trace.steps[0]
     signals = {s: writer.register_var(scope, unbroken(s), "wire", 1, init=v) for s, v in step.state.items()}
@@ -43,7 +45,7 @@ def to_vcd(trace: Trace, result: Result) -> str:
 
 def _clock(trace: Trace) -> str:
     loop = f" The loop from step {trace.loop} on is shown twice." if trace.loop is not None else ""
-    return f"Untimed: one time unit is one step, only the order counts.{loop}"
+    return f"Untimed: one second is one step, only the order counts.{loop}"
 
 
 def _ascii(text: str) -> str:
@@ -51,11 +53,12 @@ def _ascii(text: str) -> str:
 
 
 def files(reports: Sequence[FileReport], _: Mapping[str, Any]) -> dict[str, str]:
-    """A dump for each run of each property."""
+    """A dump for each run of each property, of every cause where all are listed."""
     return {
-        f"{name}.vcd": to_vcd(trace, result)
+        f"{name}.vcd": to_vcd(trace, group)
         for _, result, stem in stems(reports)
-        for name, trace in zip(numbered(stem, len(result.traces)), result.traces, strict=True)
+        for own, _, group in pieces(result, stem)
+        for name, trace in zip(numbered(own, len(group.traces)), group.traces, strict=True)
     }
 
 

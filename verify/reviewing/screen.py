@@ -63,18 +63,10 @@ def _line(walk: Walk, row: Row, place: int, width: int, page: Page) -> str:
     width = min(width, page.width // 2)
     switched = visible(row.switched)
     switched = switched if columns(switched) <= width else f"{switched[: width - 3]}..."
-    notes = ", ".join(filter(None, [row.note, *_notes(walk, place)]))
+    notes = ", ".join(filter(None, [row.note, "the runs part" if place == walk.parting else ""]))
     text = f"{mark} {row.number:>4}  {switched}{' ' * (width - columns(switched))}  {visible(notes)}".rstrip()
     text = text[: page.width]
     return page.paint("strong", text) if mark == ">" else text
-
-
-def _notes(walk: Walk, place: int) -> list[str]:
-    decided = walk.here.result.facts.get("decided_at")
-    return [
-        *(["the runs part"] if place == walk.parting else []),
-        *(["decided"] if decided and place == decided[walk.run] else []),
-    ]
 
 
 def _state(walk: Walk, page: Page) -> list[str]:

@@ -22,14 +22,13 @@ class Failure:
 
 def failures(files: Sequence[Reviewed]) -> list[Failure]:
     """Everything that there are runs to walk through, in the order of the document."""
-    found = []
-    for file in files:
-        for result in file.results:
-            if result.facts.get("causes"):
-                found += [Failure(file, heading, group) for heading, group in groups(result)]
-            elif result.traces:
-                found.append(Failure(file, "", result))
-    return found
+    return [
+        Failure(file, heading, group)
+        for file in files
+        for result in file.results
+        if result.traces
+        for heading, group in groups(result)
+    ]
 
 
 @dataclass
