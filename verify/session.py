@@ -28,7 +28,7 @@ from settled.verify.questions import Answer, Question, Task
 from settled.verify.replay import replay
 from settled.verify.result import FileReport, Result, Trace, trace
 from settled.verify.shorten import shortened
-from settled.verify.side_by_side import decide
+from settled.verify.side_by_side import decide, release
 from settled.verify.understood import beside, understood
 
 WITHOUT_START = ("stable-states", "initialises")
@@ -73,10 +73,14 @@ class Session:
 
     def results(self) -> Iterator[Result]:
         """Decide one property after the other."""
-        for prop in self.properties:
-            if self.settings.report is not None:
-                self.settings.report(prop.name)
-            yield self.decide(prop)
+        try:
+            for prop in self.properties:
+                if self.settings.report is not None:
+                    self.settings.report(prop.name)
+                yield self.decide(prop)
+        finally:
+            for memory in self._memory.values():
+                release(memory)
 
     def report(self, results: Sequence[Result]) -> FileReport:
         """All about the file."""

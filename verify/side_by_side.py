@@ -3,7 +3,7 @@
 A small circuit is decided at once by the engines at home, which keep what they explored for the next property. What
 they leave open after so many states or seconds goes to the engines apart, each in a process of its own, while the
 engines at home go on under the full limits. With one job everything comes one after the other, each engine apart with
-a share of the time.
+a share of the time. A process that decided waits for the next question with what it has found out; others are stopped.
 """
 
 from __future__ import annotations
@@ -11,7 +11,7 @@ from __future__ import annotations
 import os
 import signal
 import time
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from multiprocessing import get_context
 from multiprocessing.connection import Connection, wait
@@ -19,7 +19,7 @@ from types import TracebackType
 from typing import Any
 
 from settled.verify.engines import Engine, able, attempt
-from settled.verify.limits import LimitReached
+from settled.verify.limits import LimitReached, Limits
 from settled.verify.questions import Answer, Question, Task, undecided
 
 QUICK = 20_000
@@ -41,10 +41,7 @@ def decide(task: Task, question: Question, jobs: int) -> Answer:
     apart = [e for e in able(question) if e.apart]
     if not apart:
         return at_home(task, question, home, [])
-    limits = task.limits
-    soon = min(limits.seconds, limits.spent() + SOON)
-    quick = replace(limits, states=min(QUICK, limits.states), seconds=soon)
-    answer = at_home(replace(task, limits=quick), question, home, [])
+    answer = at_home(replace(task, limits=quick(task.limits, jobs)), question, home, [])
     if answer.verdict != "undecided":
         return answer
     if jobs == 1:
@@ -53,6 +50,12 @@ def decide(task: Task, question: Question, jobs: int) -> Answer:
         listening = replace(task, limits=replace(task.limits, listen=workers.poll))
         answer = at_home(listening, question, home, [])
         return answer if answer.verdict != "undecided" else workers.finish(answer)
+
+
+def quick(limits: Limits, jobs: int) -> Limits:
+    """Limits for the quick attempt; with one job nothing in it depends on the clock before the time limit."""
+    seconds = limits.seconds if jobs == 1 else min(limits.seconds, limits.spent() + SOON)
+    return replace(limits, states=min(QUICK, limits.states), seconds=seconds)
 
 
 def at_home(task: Task, question: Question, engines: Sequence[Engine], reasons: list[str]) -> Answer:
@@ -89,15 +92,33 @@ def together(reasons: Sequence[str], engines: Sequence[Engine]) -> Answer:
 
 @dataclass
 class Worker:
-    """An engine at work in a process of its own, and the line on which its answer comes."""
+    """An engine at work in a process of its own, and the line on which questions go and answers come."""
 
     engine: Engine
     process: Any
     line: Connection
 
+    def stop(self) -> None:
+        """End the process, whatever it does."""
+        self.process.kill()
+        self.process.join()
+        self.line.close()
+
+
+def idle(task: Task) -> dict[str, Worker]:
+    """The processes that wait for a question about the circuit of the task, by engine."""
+    waiting: dict[str, Worker] = task.memory.setdefault("apart", {})
+    return waiting
+
+
+def release(memory: dict[str, Any]) -> None:
+    """Stop the processes that wait in the memory of a task."""
+    for worker in memory.pop("apart", {}).values():
+        worker.stop()
+
 
 class Workers:
-    """Engines apart, at most `most` at a time; leaving the context stops them all."""
+    """Engines apart, at most `most` at a time; leaving the context stops those that have not decided."""
 
     def __init__(self, task: Task, question: Question, engines: Sequence[Engine], most: int) -> None:
         self.task, self.question, self.most = task, question, most
@@ -113,10 +134,7 @@ class Workers:
 
     def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, at: TracebackType | None) -> None:
         for worker in self.running:
-            worker.process.kill()
-        for worker in self.running:
-            worker.process.join()
-            worker.line.close()
+            worker.stop()
 
     def poll(self) -> None:
         """Take in what has come. Raises `Preempted` once an engine has decided."""
@@ -125,7 +143,12 @@ class Workers:
             raise Preempted("another engine has decided")
 
     def finish(self, home: Answer) -> Answer:
-        """Wait for a decision, until the time limit at the latest; `home`: what the engines at home came to."""
+        """Wait for a decision, until the time limit at the latest; `home`: what the engines at home came to.
+
+        Their place goes to one more engine apart.
+        """
+        self.most += 1
+        self._fill()
         while self.decided is None and self.running and self.task.limits.left() + GRACE > 0:
             self._take(min(0.2, self.task.limits.left() + GRACE))
             if self.task.limits.spent() > self.task.limits.seconds + GRACE:
@@ -139,15 +162,12 @@ class Workers:
         return undecided("; ".join([*first, *self.reasons]), ", ".join(methods))
 
     def _fill(self) -> None:
+        asked = replace(self.task.limits, report=None, listen=None), self.task.limits.report is not None
         while self.waiting and len(self.running) < self.most:
             engine = self.waiting.pop(0)
-            here, there = get_context("fork").Pipe(duplex=False)
-            process = get_context("fork").Process(
-                target=work, args=(engine, self.task, self.question, there, os.getpid()), daemon=True
-            )
-            process.start()
-            there.close()
-            self.running.append(Worker(engine, process, here))
+            worker = idle(self.task).pop(engine.name, None) or started(engine, self.task)
+            worker.line.send((self.question, *asked))
+            self.running.append(worker)
 
     def _take(self, seconds: float) -> None:
         ready = wait([w.line for w in self.running], seconds)
@@ -165,19 +185,45 @@ class Workers:
                 self.task.limits.report(said)
             return
         self.running.remove(worker)
-        worker.process.join()
-        worker.line.close()
-        if kind == "failed":
-            raise EngineFailed(f"{worker.engine.name}: {said}")
         if kind == "answer" and said.verdict != "undecided":
             self.decided = self.decided or said
-        else:
-            self.reasons.append(f"{worker.engine.name}: {said if kind == 'lost' else said.reason}")
+            idle(self.task)[worker.engine.name] = worker
+            return
+        worker.stop()
+        if kind == "failed":
+            raise EngineFailed(f"{worker.engine.name}: {said}")
+        self.reasons.append(f"{worker.engine.name}: {said if kind == 'lost' else said.reason}")
 
 
-def work(engine: Engine, task: Task, question: Question, line: Connection, parent: int) -> None:
-    """What a process apart does: one attempt, its answer sent home; it ends when nobody is there any more."""
+def started(engine: Engine, task: Task) -> Worker:
+    """A process for an engine, waiting for questions about the circuit of the task."""
+    here, there = get_context("fork").Pipe()
+    process = get_context("fork").Process(
+        target=work, args=(engine, replace(task, memory={}), there, os.getpid()), daemon=True
+    )
+    process.start()
+    there.close()
+    return Worker(engine, process, here)
+
+
+def work(engine: Engine, task: Task, line: Connection, parent: int) -> None:
+    """What a process apart does: answer one question after the other; it ends when nobody is there any more."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+    def listen() -> None:
+        if os.getppid() != parent:
+            os._exit(1)
+
+    while True:
+        while not line.poll(1.0):
+            listen()
+        question, limits, reporting = line.recv()
+        limits = replace(limits, report=reporter(line) if reporting else None, listen=listen)
+        line.send(attempted(engine, replace(task, limits=limits), question))
+
+
+def reporter(line: Connection) -> Callable[[str], None]:
+    """Sends progress home, a few times a second."""
     last = [0.0]
 
     def report(progress: str) -> None:
@@ -185,16 +231,14 @@ def work(engine: Engine, task: Task, question: Question, line: Connection, paren
             last[0] = time.monotonic()
             line.send(("progress", progress))
 
-    def listen() -> None:
-        if os.getppid() != parent:
-            os._exit(1)
+    return report
 
-    limits = replace(task.limits, report=report if task.limits.report is not None else None, listen=listen)
+
+def attempted(engine: Engine, task: Task, question: Question) -> tuple[str, Any]:
+    """What an attempt comes to: `answer` with it, or `failed` with the exception."""
     try:
-        message: tuple[str, Any] = ("answer", attempt(engine, replace(task, limits=limits, memory={}), question))
+        return "answer", attempt(engine, task, question)
     except MemoryError:
-        message = ("answer", undecided("out of memory", engine.name))
+        return "answer", undecided("out of memory", engine.name)
     except Exception as error:
-        message = ("failed", f"{type(error).__name__}: {error}")
-    line.send(message)
-    line.close()
+        return "failed", f"{type(error).__name__}: {error}"

@@ -16,14 +16,18 @@ from settled.verify import side_by_side
 from settled.verify.engines import Engine
 from settled.verify.limits import Limits
 from settled.verify.questions import Answer, Oscillates, Question, Task, undecided
-from settled.verify.side_by_side import EngineFailed, decide
+from settled.verify.side_by_side import EngineFailed, decide, idle, release
 
 Answers = Callable[[Task, Question], Answer]
 LATCH = Circuit("latch", ("d",), ("q",), {"q": var("d")}, ("q",))
 
 
+TASKS: list[Task] = []
+
+
 def task(seconds: float = 20.0) -> Task:
-    return Task(LATCH, Environment(), Limits(seconds=seconds))
+    TASKS.append(Task(LATCH, Environment(), Limits(seconds=seconds)))
+    return TASKS[-1]
 
 
 def says(verdict: str, name: str) -> Answers:
@@ -57,6 +61,8 @@ def engines(monkeypatch: pytest.MonkeyPatch) -> Iterator[Callable[..., None]]:
         monkeypatch.setattr(side_by_side, "able", lambda _question: made)
 
     yield use
+    while TASKS:
+        release(TASKS.pop().memory)
     assert not multiprocessing.active_children()
 
 
@@ -90,6 +96,28 @@ def test_with_one_job_they_come_one_after_the_other(engines: Callable[..., None]
 def test_the_losers_are_stopped(engines: Callable[..., None]) -> None:
     engines(slow=deaf, quick=says("proved", "quick"))
     assert decide(task(), Oscillates(), 3).method == "quick"
+
+
+@pytest.mark.parametrize("jobs", [1, 2])
+def test_a_process_that_decided_answers_the_next_question_with_what_it_knows(
+    engines: Callable[..., None], jobs: int
+) -> None:
+    def counting(asked: Task, _: Question) -> Answer:
+        asked.memory["asked"] = asked.memory.get("asked", 0) + 1
+        return Answer("proved", f"{os.getpid()} {asked.memory['asked']}")
+
+    engines(counting=counting)
+    one = task()
+    found = [decide(one, Oscillates(), jobs).method.split() for _ in range(3)]
+    assert len({process for process, _ in found}) == 1
+    assert [number for _, number in found] == ["1", "2", "3"]
+
+
+def test_a_process_that_did_not_decide_is_not_kept(engines: Callable[..., None]) -> None:
+    engines(unable=says("undecided", "unable"), able=says("proved", "able"))
+    one = task()
+    decide(one, Oscillates(), 2)
+    assert list(idle(one)) == ["able"]
 
 
 def test_a_process_that_dies_leaves_the_others_at_work(engines: Callable[..., None]) -> None:

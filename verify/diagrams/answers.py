@@ -308,10 +308,18 @@ ANSWERS: dict[type[Question], Callable[[Reading, Any], Answer]] = {
 }
 
 
+def _reading(task: Task) -> Reading:
+    """What an earlier question about the task has left, under the limits of this one."""
+    reading: Reading = task.memory.get("diagrams") or Reading(task)
+    task.memory["diagrams"] = reading
+    reading.world.limits = reading.d.limits = task.limits
+    return reading
+
+
 def answered(task: Task, question: Question) -> Answer:
     """The answer to a question. Raises `LimitReached`, also when the diagrams have no memory left."""
     try:
-        return ANSWERS[type(question)](Reading(task), question)
+        return ANSWERS[type(question)](_reading(task), question)
     except (ValueError, RuntimeError) as error:
         if not out_of_memory(error):
             raise

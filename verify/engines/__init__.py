@@ -17,7 +17,7 @@ from settled.verify.questions import Answer, Question, Task, undecided
 class Engine:
     """One way of answering. `answers[kind of question]` takes the task and the question; `rank` orders attempts.
 
-    An engine that is `apart` keeps nothing in the task's memory and works in a process of its own beside others.
+    An engine that is `apart` works in a process of its own beside others, with a memory of its own.
     """
 
     name: str
