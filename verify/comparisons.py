@@ -20,7 +20,7 @@ History = tuple[tuple[int, ...], ...]
 
 Hazard = Callable[[History], tuple[str, dict[str, Any]]]
 
-KEPT = ("fewest_changes", "in_step", "partners", "races")
+KEPT = ("fewest_changes", "in_step", "partners", "races", "perhaps_fewer")
 
 
 @dataclass(frozen=True)
@@ -165,7 +165,9 @@ def apart(sides: tuple[Side, Side], runs: tuple[Run, Run], outputs: Sequence[str
 
 
 def _open(answer: Answer) -> str:
-    """Whose own races leave the outputs open, if anyone's."""
+    """Whose own races leave the outputs open, if anyone's; and whether fewer changes may do."""
     names = dict.fromkeys(race["circuit"] for race in answer.facts.get("races", ()))
     whose = " and ".join(names)
-    return f" ({whose} can itself end in different states on the way: see the property `race-free`)" if names else ""
+    if names:
+        return f" ({whose} can itself end in different states on the way: see the property `race-free`)"
+    return " (perhaps fewer do, for some response may have several ends)" if "perhaps_fewer" in answer.facts else ""

@@ -15,6 +15,7 @@ from dataclasses import dataclass
 from settled.encodings.three_valued import Rails, join, known, rails, unknown
 from settled.models.environment import Environment
 from settled.models.logic import TRUE, Expr, and_, ite, not_, or_, rename, support, var, xor
+from settled.verify.limits import LimitReached
 from settled.verify.never import Never, confirm
 from settled.verify.questions import Task
 from settled.verify.settled_states import Settled
@@ -141,6 +142,14 @@ def proof(task: Task) -> Established | str:
         confirm(change.conditions, found, task.limits)
         formulas += len(found)
     return Established(exercised(settled, task), formulas)
+
+
+def shown(task: Task) -> bool:
+    """Whether `proof` comes to show it within the limits."""
+    try:
+        return isinstance(proof(task), Established)
+    except LimitReached:
+        return False
 
 
 def exercised(settled: Settled, task: Task) -> bool:

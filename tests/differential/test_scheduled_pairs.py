@@ -33,7 +33,8 @@ def test_every_decision_is_the_oracles() -> None:
             expected.vacuous,
         ), seed
         if answer.verdict == "refuted":
-            assert answer.facts["fewest_changes"] >= expected.facts["fewest_changes"], seed
+            more = answer.facts["fewest_changes"] - expected.facts["fewest_changes"]
+            assert more == 0 or (more > 0 and "perhaps_fewer" in answer.facts), seed
             outcome["shortest"] += answer.facts["fewest_changes"] == expected.facts["fewest_changes"]
             replay(KIND, Behaviour(pair.original, pair.environment), question, answer)
     assert min(outcome["proved"], outcome["refuted"]) > CASES / 8, outcome

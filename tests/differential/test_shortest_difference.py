@@ -8,7 +8,6 @@ from random import Random
 
 import oracle_equivalence
 import pytest
-from oracle_equivalence import Pairing
 from random_circuits import forward, pieces, random_case, reset
 from random_pairs import Pair, broken, rewritten
 
@@ -55,6 +54,8 @@ def test_no_refutation_is_against_the_oracle(monkeypatch: pytest.MonkeyPatch) ->
         against = oracle_equivalence.offending_pair(*pair, [written(pair, run) for run in answer.runs])
         assert against is None, (seed, against)
         outcome[pair.environment.changes] += answer.facts["fewest_changes"] > 0
-        if all(Pairing(*pair).rows()):
-            assert answer.facts["fewest_changes"] == expected.facts["fewest_changes"], seed
+        more = answer.facts["fewest_changes"] - expected.facts["fewest_changes"]
+        assert more == 0 or (more > 0 and "perhaps_fewer" in answer.facts), seed
+        outcome["perhaps fewer"] += "perhaps_fewer" in answer.facts
+        outcome["lonely"] += len(answer.runs) == 1
     assert outcome["refuted"] > 100 and min(outcome[c] for c in ("single", "simultaneous", "burst")) >= 5, outcome

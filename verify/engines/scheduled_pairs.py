@@ -12,6 +12,7 @@ from itertools import islice
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
+from settled.verify import known_responses
 from settled.verify.engines import Engine, able, attempt
 from settled.verify.engines.pair_search import certificate_of, ranged
 from settled.verify.explicit.pairs import PairSearch, rows
@@ -46,6 +47,8 @@ def differs(task: Task, question: Differs) -> Answer:
     found = search.run(begin)
     if found is not None:
         runs, facts = Refutation(search, ("the original", "the other circuit")).of(found)
+        if found.changes > 1 and not all(known_responses.shown(Task(*side, task.limits)) for side in sides):
+            facts["perhaps_fewer"] = True
         return Answer("refuted", NAME, runs=runs, ranged=ranged(search), facts=facts)
     for circuit, environment in sides:
         open_ = open_outcomes(task, circuit, environment)

@@ -168,7 +168,7 @@ class ScheduledReplies:
         allowed = turned(willing, len(states))
         return {s: self._schedules(s & mask, a) for s, a in zip(states, allowed, strict=True)}
 
-    def run_to(self, state: int, schedule: Schedule, end: int) -> list[int]:
+    def run(self, state: int, schedule: Schedule) -> list[int]:
         """The run of a response, the state before the change first."""
         run = [state]
         place = self.circuit.place
@@ -177,6 +177,11 @@ class ScheduledReplies:
             values = {s: run[-1] >> i & 1 for s, i in place.items()}
             for switched in self._schedules_of.settle(values, 1, self.circuit.inputs):
                 run.append(run[-1] ^ sum(1 << place[n] for n, moved in switched if moved))
+        return run
+
+    def run_to(self, state: int, schedule: Schedule, end: int) -> list[int]:
+        """The run of a response that has been found to end there."""
+        run = self.run(state, schedule)
         assert run[-1] == end, "the same schedule comes to the same end"
         return run
 

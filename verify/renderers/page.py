@@ -56,6 +56,8 @@ def visible(text: str) -> str:
 
 def columns(text: str) -> int:
     """How many columns of a terminal `text` takes (without colours)."""
+    if text.isascii():
+        return len(text)
     return sum(0 if unicodedata.combining(c) else 2 if unicodedata.east_asian_width(c) in "WF" else 1 for c in text)
 
 

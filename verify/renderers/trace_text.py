@@ -10,6 +10,7 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 from settled.models.circuit import Circuit
 from settled.verify.properties import kinds
@@ -46,7 +47,7 @@ class Column:
     cells: tuple[tuple[str, ...], ...]
     gap: int = 2
 
-    @property
+    @cached_property
     def width(self) -> int:
         """Columns of the page that it takes."""
         return max(columns(line) for lines in (self.header, *self.cells) for line in lines)
