@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import re
+from dataclasses import replace
 from importlib.resources import files
 from typing import Any
 
@@ -18,6 +19,7 @@ from typer.testing import CliRunner
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
+from settled.models.logic import and_, not_, var
 from settled.models.specification import Property
 from settled.verify import check
 from settled.verify.cli import app
@@ -168,6 +170,41 @@ def test_an_identity_survives_what_does_not_concern_it() -> None:
     assert identities(LATCH) == identities(moved) == identities(held)
     renamed = LATCH.replace("keep", "hold")
     assert not set(identities(LATCH).values()) & set(identities(renamed).values())
+
+
+def test_of_two_gates_alike_neither_is_preferred_by_its_line() -> None:
+    latch = """
+[circuit]
+inputs = ["s", "r"]
+outputs = ["q", "p"]
+[circuit.excitation]
+q = "~(r | p)"
+p = "~(s | q)"
+[environment]
+changes = "simultaneous"
+[[property]]
+check = "race-free"
+"""
+    mirrored = latch.replace('q = "~(r | p)"\np = "~(s | q)"', 'p = "~(s | q)"\nq = "~(r | p)"')
+    assert mirrored != latch and identities(mirrored) == identities(latch)
+
+
+@pytest.mark.parametrize("kind", ["race-free", "hazard-free"])
+def test_identities_survive_other_orders_and_a_gate_more(kind: str) -> None:
+    several = 0
+    for circuit, environment, options, result in refutations(kind, 60, every=True):
+        shuffled = replace(circuit, inputs=circuit.inputs[::-1], nodes=circuit.nodes[2:] + circuit.nodes[:2])
+        beside = {"beside": not_(var(circuit.inputs[0])), "behind": and_(var(circuit.nodes[-1]), var("beside"))}
+        wider = replace(
+            circuit, nodes=(*circuit.nodes, "beside", "behind"), excitation={**circuit.excitation, **beside}
+        )
+        options = {"signals": circuit.outputs, **options} if kind == "hazard-free" else options
+        for other in (shuffled, wider):
+            session = session_of(other, environment, (Property(kind, kind, options),), Settings(every=True))
+            (again,) = session.results()
+            assert {c["id"] for c in again.facts["causes"]} == {c["id"] for c in result.facts["causes"]}
+        several += len(result.facts["causes"]) > 1
+    assert several > 2
 
 
 def test_all_on_the_command_line_in_text_and_in_the_document() -> None:

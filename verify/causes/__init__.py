@@ -3,13 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from contextlib import suppress
 from hashlib import sha256
 from typing import Any
 
+from settled.encodings.packed import TooWide
 from settled.models.states import Behaviour, Run
+from settled.verify.causes.core import Cores
 from settled.verify.causes.late_gates import hazard_cause
 from settled.verify.causes.racing_events import race_cause
-from settled.verify.limits import Limits
+from settled.verify.limits import LimitReached, Limits
 from settled.verify.questions import Diverges, Flickers, Question
 
 STATES, SECONDS = 200_000, 10.0
@@ -23,14 +26,17 @@ def explain(behaviour: Behaviour, question: Question, runs: Sequence[Run], facts
         fault = hazard_cause(behaviour, runs[0].states, signal, facts["before"], facts["offending_step"])
         return {"fault": fault, "cause": hazard_identity(signal, fault)}
     if isinstance(question, Diverges):
-        found = race_cause(behaviour, [run.states for run in runs], facts["before"], Limits(SECONDS, STATES))
-        return {**found, "cause": race_identity(found["race"])} if found else {}
+        states, limits = [run.states for run in runs], Limits(SECONDS, STATES)
+        found = race_cause(behaviour, states, facts["before"], limits)
+        with suppress(TooWide, LimitReached):
+            found |= {"cause": race_identity(Cores(behaviour, limits).events(states, facts["before"]))}
+        return found
     return {}
 
 
-def race_identity(race: Mapping[str, Any]) -> str:
-    """The identity of a race: of where both paths begin, what came too early, what came too late."""
-    return identity("race-free", race["fork"], race["early"], race["late"])
+def race_identity(events: Sequence[str]) -> str:
+    """The identity of a race: of where both paths start from, what came too early, what came too late."""
+    return identity("race-free", *events)
 
 
 def hazard_identity(signal: str, fault: Mapping[str, Any]) -> str:

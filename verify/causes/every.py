@@ -14,8 +14,8 @@ import numpy as np
 
 from settled.models.states import Behaviour, Run
 from settled.verify.causes import explain, hazard_identity, race_identity
+from settled.verify.causes.core import Cores
 from settled.verify.causes.late_gates import hazard_cause
-from settled.verify.causes.racing_events import Race
 from settled.verify.engines.exhaustive import explored, race_runs, refuted, run_with_hazard
 from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.hazards import Watch, flickering, least_flickers, still_changing
@@ -82,13 +82,13 @@ def every_cause(task: Task, question: Question) -> Causes | None:
 
 def racing(graph: Graph, behaviour: Behaviour) -> Iterator[tuple[str, Failure]]:
     """The failures of all critical races, each with the identity of its cause; short ones first."""
-    races = Races(graph)
+    races, cores = Races(graph), Cores(behaviour, graph.limits)
     _, steps = graph.lengths(races.changes.source[races.numbers])
     for number in races.numbers[np.lexsort((steps, races.inputs))].tolist():
         first, *others = races.endings(number)
         for other in others:
-            race = Race(behaviour, graph, [_states(graph, first), _states(graph, other)], 0).facts()["race"]
-            yield race_identity(race), Failure(number, int(races.changes.source[number]), (first, other))
+            events = cores.events([_states(graph, first), _states(graph, other)], 0)
+            yield race_identity(events), Failure(number, int(races.changes.source[number]), (first, other))
 
 
 def flickers(graph: Graph, behaviour: Behaviour, question: Flickers) -> Iterator[tuple[str, Failure]]:

@@ -1,7 +1,8 @@
 """What excited what: the events of a run, each with those that led to it.
 
 A node is excited in a state and was not in the state before: of what switched in between and is read by the node, those
-events excited it without any one of which it would not be excited; all of them where no single one counts.
+events excited it without any one of which it would not be excited; all of them where no single one counts. They come
+in the order of their names.
 """
 
 from __future__ import annotations
@@ -67,7 +68,7 @@ class History:
 
     def _needed(self, reads: Sequence[str], step: int, holds: Callable[[int], bool]) -> list[Event]:
         moved = self.states[step] ^ self.states[step - 1]
-        found = [s for s in self.circuit.signals if s in reads and moved >> self.circuit.place[s] & 1]
+        found = [s for s in sorted(reads) if moved >> self.circuit.place[s] & 1]
         alone = [s for s in found if not holds(self.states[step] ^ 1 << self.circuit.place[s])]
         return [Event(s, step) for s in alone or found]
 

@@ -1,10 +1,10 @@
 """The gate that was late for a hazard.
 
 The *term* is what turned the signal back: of the events that excited its second change (or, for a signal without a
-delay of its own, made it) the first whose absence would have prevented it. The *late* gate is found from there
-backwards, from each event to one that excited it, up to the first that was already due before the signal changed for
-the first time: had it come in time, the signal need not have changed. There is none where the way back leads through
-the signal itself, which then turned itself back.
+delay of its own, made it) one whose absence would have prevented it, if need be the signal itself. The *late* gate is
+found from there backwards, from each event to one that excited it, up to the first that was already due before the
+signal changed for the first time: had it come in time, the signal need not have changed. There is none where the way
+back leads through the signal itself, which then turned itself back.
 """
 
 from __future__ import annotations
@@ -25,7 +25,7 @@ def hazard_cause(behaviour: Behaviour, states: Sequence[int], signal: str, begin
     wave = [value(circuit, [circuit.signal(signal)], state)[0] for state in states[: last + 1]]
     first = next(i for i in range(begin + 1, last) if wave[i] != wave[i - 1])
     history = History(behaviour, states, begin)
-    term = history.turned(signal, last)[0]
+    term = min(history.turned(signal, last), key=lambda event: event.name == signal)
     late = _late(history, term, Event(signal, first))
     shown = {"signal": f"{signal}{'+' if wave[first] else '-'}", "term": history.sign(term)}
     if late is not None:

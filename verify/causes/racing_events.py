@@ -1,10 +1,12 @@
 """The two events that race where a response has two ends.
 
 A run is *decided* from its first state on from which only one end can be reached; the step into it decides, and of its
-events the least part that decides by itself (the fewest, then the first in the order of the signals). The event `x`
+events the least part that decides by itself (the fewest, then the first by name). The event `x`
 that decides one run by itself *races* with the event `z` of the other run that comes before it there: up to `z`, `x`
 alone still leaves only the one end; after `z` it no longer does. Where neither run shows this (as when the order of
-inputs has changed the states on the way), the events that decide the runs are the two that race.
+inputs has changed the states on the way), the events that decide the runs are the two that race. Wherever several would
+do, the first by name is taken, and only what can act on the two is looked at: a cause stays the same when the lines of
+a circuit change places or something is added beside it.
 """
 
 from __future__ import annotations
@@ -17,6 +19,8 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from settled.encodings.packed import Packed, Places, TooWide, Words
+from settled.models.circuit import Circuit
+from settled.models.logic import support
 from settled.models.states import Behaviour, Situation, members, value
 from settled.verify.causes.history import Event, History
 from settled.verify.explicit.graph import MANY, Graph
@@ -75,17 +79,25 @@ class Race:
         return vertex ^ flipped ^ (flipped & low) << self.graph.packed.state_bits
 
     def due(self, vertex: int) -> Iterator[int]:
-        """The bits that may switch alone, in the order of the signals."""
+        """The bits that may switch alone, by name."""
         waiting = vertex >> self.graph.packed.state_bits
         state = vertex & int(self.graph.packed.state_mask)
-        for bit in members(self.behaviour.excited(state) | waiting):
+        for bit in self.by_name(self.behaviour.excited(state) | waiting):
             if self.outcome(self.after(vertex, [bit])) is not None:
                 yield bit
+
+    def name(self, bit: int) -> str:
+        """The signal of a bit."""
+        return self.circuit.signals[bit.bit_length() - 1]
+
+    def by_name(self, signals: int) -> list[int]:
+        """The bits of a packed set in the order of their names."""
+        return sorted(members(signals), key=self.name)
 
     def _decision(self, states: Sequence[int]) -> Decision:
         vertices = [self.vertex(state, states[-1]) for state in states]
         step = next(i for i in range(self.begin + 1, len(states)) if self.outcome(vertices[i]) != MANY)
-        whole = list(members(states[step] ^ states[step - 1]))
+        whole = self.by_name(states[step] ^ states[step - 1])
         for size in (1, 2):
             for part in combinations(whole, size):
                 if self.outcome(self.after(vertices[step - 1], part)) == self.outcome(vertices[step]):
@@ -94,10 +106,9 @@ class Race:
 
     def pair(self) -> Pair:
         """The two events that race."""
-        for number in (0, 1):
-            found = self._overtaken(number)
-            if found is not None:
-                return found
+        found = [pair for pair in map(self._overtaken, (0, 1)) if pair is not None]
+        if found:
+            return min(found, key=lambda pair: (pair.steps, sorted(map(self.name, pair.bits))))
         one = self.decisions[0].part[0]
         others = [*self.decisions[1].part, *self.due(self.decisions[0].vertex)]
         bits = one, next(bit for bit in others if bit != one)
@@ -116,7 +127,7 @@ class Race:
 
         for step in range(self.begin + 1, len(states)):
             if decides(vertices[step - 1]) and not decides(vertices[step]):
-                others = [bit for bit in members(states[step] ^ states[step - 1]) if bit != own]
+                others = [bit for bit in self.by_name(states[step] ^ states[step - 1]) if bit != own]
                 alone = [bit for bit in others if not decides(self.after(vertices[step - 1], [bit]))]
                 rival = (alone or others)[0]
                 bits = (own, rival) if number == 0 else (rival, own)
@@ -126,13 +137,11 @@ class Race:
     def facts(self) -> dict[str, Any]:
         """`decided_at` and `race` of the facts about a critical race."""
         pair = self.pair()
-        events = [
-            Event(self.circuit.signals[b.bit_length() - 1], s) for b, s in zip(pair.bits, pair.steps, strict=True)
-        ]
+        events = [Event(self.name(bit), step) for bit, step in zip(pair.bits, pair.steps, strict=True)]
         histories = [self.histories[number] for number in pair.runs]
         back = [history.ancestors(event) for history, event in zip(histories, events, strict=True)]
         common = [event for event in back[0] if event in back[1]]
-        fork = max(common, key=lambda e: (e.step, -self.circuit.place[e.name]), default=None)
+        fork = min(common, key=lambda e: (-e.step, e.name), default=None)
         far = [ways[fork] if fork else max(ways.values()) for ways in back]
         signs = [history.sign(event) for history, event in zip(histories, events, strict=True)]
         early = self._early([event.name for event in events], far)
@@ -149,23 +158,35 @@ class Race:
     def _early(self, names: Sequence[str], far: Sequence[int]) -> int:
         """The run that is the fault: its event comes too early, that of the other run too late.
 
-        A connection should be fast, so it is the late one of the two. Else the run counts as the fault whose end has
-        more outputs, else more nodes, that differ from before the change; else the one whose event is at the end of
-        the longer path from the fork; else the one whose event comes first in the order of the signals.
+        A connection should be fast, so it is the late one of the two. Else the run counts as the fault that changes
+        more outputs, else more nodes, of those that can act on the two events; else the one whose event is at the end
+        of the longer path from the fork; else the one whose event comes first by name.
         """
         circuit, before = self.circuit, self.runs[0][self.begin]
-        outputs = list(map(circuit.signal, circuit.outputs))
+        near = _cone(circuit, names)
+        outputs = [e for e in circuit.resolve(*map(circuit.signal, circuit.outputs)) if near.issuperset(support(e))]
+        nodes = sum(1 << circuit.place[n] for n in circuit.nodes if n in near)
         ranks = []
         for name, distance, states in zip(names, far, self.runs, strict=True):
             pairs = zip(value(circuit, outputs, before), value(circuit, outputs, states[-1]), strict=True)
-            nodes = ((states[-1] ^ before) & ~circuit.input_mask).bit_count()
+            changed = ((states[-1] ^ before) & nodes).bit_count()
             wire = circuit.delay == "wire" and ">" in name
-            ranks.append((wire, -sum(a != b for a, b in pairs), -nodes, -distance, circuit.place[name]))
+            ranks.append((wire, -sum(a != b for a, b in pairs), -changed, -distance, name))
         return 0 if ranks[0] < ranks[1] else 1
 
     def _roots(self, back: Sequence[Mapping[Event, int]]) -> list[str]:
         names = {e.name for ways in back for e in ways if e.name in self.circuit.inputs}
         return sorted(names, key=self.circuit.place.__getitem__)
+
+
+def _cone(circuit: Circuit, names: Sequence[str]) -> set[str]:
+    """Everything that can act on these signals, directly or through others, and the signals themselves."""
+    found, fresh = set(names), list(names)
+    for name in fresh:
+        reads = [s for s in support(circuit.excitation[name]) if s not in found] if name in circuit.excitation else []
+        found.update(reads)
+        fresh += reads
+    return found
 
 
 def race_cause(behaviour: Behaviour, runs: Sequence[Sequence[int]], begin: int, limits: Limits) -> dict[str, Any]:
@@ -175,13 +196,13 @@ def race_cause(behaviour: Behaviour, runs: Sequence[Sequence[int]], begin: int, 
     """
     try:
         packed = Packed(behaviour.circuit, behaviour.environment)
-        graph = Response(packed, limits, np.array(list(_firsts(behaviour, runs, begin, packed)), np.uint64))
+        graph = Response(packed, limits, np.array(list(firsts(behaviour, runs, begin, packed)), np.uint64))
     except (TooWide, LimitReached):
         return {}
     return {} if graph.unfinished else Race(behaviour, graph, runs, begin).facts()
 
 
-def _firsts(behaviour: Behaviour, runs: Sequence[Sequence[int]], begin: int, packed: Packed) -> Iterator[int]:
+def firsts(behaviour: Behaviour, runs: Sequence[Sequence[int]], begin: int, packed: Packed) -> Iterator[int]:
     """The vertices right after the first move of a change: in a burst there are several."""
     before = runs[0][begin]
     if not packed.burst:

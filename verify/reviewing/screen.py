@@ -16,6 +16,9 @@ KEYS = "arrows: step, home/end, p: runs part, r: other run, n/b: next/prior, q: 
 LEAST = 4
 """Lines that the order of events has at least."""
 
+UNFOLDED = 16
+"""Up to so many nodes are all shown."""
+
 
 def screen(walk: Walk, reasons: Reasons, page: Page, height: int) -> list[str]:
     """At most `height` lines; the order of events takes what the rest leaves and is scrolled to the present step."""
@@ -50,7 +53,8 @@ def _head(walk: Walk, page: Page) -> list[str]:
 def _order(walk: Walk, page: Page, height: int) -> list[str]:
     """A line for each step of the run, as many as fit around the present one."""
     found = rows(walk.trace, walk.here.result, walk.here.file.circuit)
-    title = f"run {walk.run + 1} of {len(walk.traces)}, {walk.trace.title}: step {walk.step} of {len(found) - 1}"
+    last = len(walk.trace.steps) - 1
+    title = f"run {walk.run + 1} of {len(walk.traces)}, {walk.trace.title}: step {walk.step} of {last}"
     most = max(height - 1, 1)
     first = max(0, min(walk.step - most // 2, len(found) - most))
     width = max(columns(visible(row.switched)) for row in found)
@@ -70,11 +74,13 @@ def _line(walk: Walk, row: Row, place: int, width: int, page: Page) -> str:
 
 
 def _state(walk: Walk, page: Page) -> list[str]:
-    """The values in the present step; nodes that never move are counted only when there are many."""
+    """The values in the present step; of many nodes those are only counted that move in none of the runs."""
     circuit, step = walk.here.file.circuit, walk.trace.steps[walk.step]
     inner = [s for s in step.state if s not in circuit.inputs]
-    folded = len(inner) > 16 and not page.whole
-    idle = {s for s in inner if not _moves(walk.trace.steps, s)} if folded else set()
+    folded = len(inner) > UNFOLDED and not page.whole
+    steps = [s for t in walk.traces if t.circuit == walk.trace.circuit for s in t.steps]
+    quiet = {s for s in inner if s not in circuit.outputs and not _moves(steps, s)}
+    idle = quiet if folded else set()
     lines = page.wrap(_values(step, [s for s in step.state if s in circuit.inputs]), "inputs  ")
     shown = _values(step, [s for s in inner if s not in idle])
     lines += page.wrap(shown + (f" ({len(idle)} more that never move)" if idle else ""), "nodes   ")
