@@ -1,4 +1,5 @@
-"""Deterministic observers beside a transition system: what has changed how often, and a state that comes again.
+"""Deterministic observers beside a transition system: what has changed how often, what is still to come, and a state
+that comes again.
 
 They turn questions about runs into questions whether a state can be reached.
 """
@@ -28,7 +29,19 @@ def counted(name: str, signal: Expr, reset: Expr, most: int) -> tuple[list[Obser
     return found, passed[most]
 
 
-SAVED = "saved"
+SAVED = "is saved"
+SAVE = "saves now"
+PENDING = "goal pending"
+
+
+def waiting_for(source: Expr, target: Expr) -> tuple[Observer, Expr]:
+    """An observer that is 1 when `source` has been true, and `target` false at that moment and ever since, the present
+    state left out; and the condition that so it is and `target` is false now, too.
+
+    A run has a last `source` without `target`, then or later, exactly when this condition holds from some state on.
+    """
+    pending = var(PENDING)
+    return Observer(PENDING, FALSE, and_(or_(pending, source), not_(target))), and_(pending, not_(target))
 
 
 def returning(circuit: Circuit, environment: Environment, nodes: Sequence[str]) -> tuple[System, Expr]:
@@ -38,7 +51,7 @@ def returning(circuit: Circuit, environment: Environment, nodes: Sequence[str]) 
     Fair: for each of them there was a moment at which it was not excited with its saved value. This is the reduction
     of liveness to safety (Biere, Artho and Schuppan 2002, recalled).
     """
-    saved, save = var(SAVED), var("save")
+    saved, save = var(SAVED), var(SAVE)
     excited = {n: circuit.is_excited[n] for n in nodes}
     saving = and_(save, not_(saved), or_(*excited.values()))
     inside = set(nodes)
@@ -53,4 +66,4 @@ def returning(circuit: Circuit, environment: Environment, nodes: Sequence[str]) 
         moved = or_(calm, now, xor(var(n), copy))
         observers.append(Observer(calm.name, FALSE, ite(saving, now, and_(saved, moved))))
         back += [not_(xor(var(n), copy)), calm]
-    return made.observed(observers, ["save"]), and_(*back)
+    return made.observed(observers, [SAVE]), and_(*back)

@@ -11,14 +11,30 @@ from settled.encodings.system import TooManyOrders
 from settled.models.logic import Expr, and_, not_, or_
 from settled.verify.engines import Engine
 from settled.verify.limits import LimitReached
-from settled.verify.questions import Answer, Diverges, Flickers, Oscillates, Question, Reaches, Task, undecided
-from settled.verify.rules import Established, Outcome, Rule, hazards, races, rings, settling, states
+from settled.verify.questions import (
+    Answer,
+    Diverges,
+    Evades,
+    Flickers,
+    Oscillates,
+    Question,
+    Reaches,
+    Task,
+    undecided,
+)
+from settled.verify.rules import Established, Outcome, Rule, hazards, progress, races, rings, settling, states
 from settled.verify.symbolic.certificates import Certificate, Proof
 from settled.verify.symbolic.reach import Reacher
 
 SHARE = 0.4
 NAME = "property-directed reachability"
-RULES: dict[type[Question], list[Rule]] = {**states.RULES, **hazards.RULES, **settling.RULES, **races.RULES}
+RULES: dict[type[Question], list[Rule]] = {
+    **states.RULES,
+    **hazards.RULES,
+    **settling.RULES,
+    **races.RULES,
+    **progress.RULES,
+}
 
 
 def answer(task: Task, question: Question) -> Answer:
@@ -58,10 +74,11 @@ def attempt(reacher: Reacher, rule: Rule, question: Question, share: float) -> O
 def _proved(reacher: Reacher, question: Question, found: Established) -> Answer:
     nothing = _nothing_to_range_over(reacher, question)
     proofs = [*found.proofs, *nothing]
-    certificate: dict[str, Any] = {"kind": "inductive invariant" if proofs else "structure", "rule": found.rule}
-    if not proofs:
+    symbolic = bool(proofs or found.arguments)
+    certificate: dict[str, Any] = {"kind": "inductive invariant" if symbolic else "structure", "rule": found.rule}
+    if not symbolic:
         return Answer("proved", NAME, certificate=certificate)
-    evidence = Certificate(reacher.base, reacher.known, proofs)
+    evidence = Certificate(reacher.base, reacher.known, proofs, found.arguments)
     evidence.check(reacher.task.limits)
     certificate |= evidence.as_data()
     return Answer("proved", NAME, exercised=not nothing, certificate=certificate, scripts=evidence.scripts())
@@ -85,6 +102,8 @@ def _exercise(reacher: Reacher, question: Question) -> Expr | None:
         return or_(begins, not_(reacher.circuit.is_stable), base.input_changes)
     if isinstance(question, Reaches) and question.only_stable:
         return reacher.circuit.is_stable
+    if isinstance(question, Evades):
+        return reacher.circuit.resolve(question.source)[0]
     return None
 
 

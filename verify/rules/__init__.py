@@ -11,16 +11,17 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from settled.models.states import Run
-from settled.verify.symbolic.certificates import Proof
+from settled.verify.symbolic.certificates import Argument, Proof
 from settled.verify.symbolic.reach import Reacher
 
 
 @dataclass(frozen=True)
 class Established:
-    """The failure asked for does not exist. `rule` turns what the proofs say into that, in one sentence."""
+    """The failure asked for does not exist. `rule` turns what proofs and arguments say into that, in one sentence."""
 
     rule: str
     proofs: tuple[Proof, ...] = ()
+    arguments: tuple[Argument, ...] = ()
 
 
 @dataclass(frozen=True)

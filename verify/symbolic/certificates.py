@@ -10,7 +10,7 @@ from collections import defaultdict
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Any, TypeVar
+from typing import Any, Protocol, TypeVar
 
 from settled.encodings.moves import begins, follows, implies, moves
 from settled.encodings.smtlib import script
@@ -53,8 +53,8 @@ class Statements:
         self.proof, self.system = proof, proof.system
         given = set(known or ())
         self.own = [clause for clause in proof.clauses if clause not in given]
-        self.clauses = [_expression(clause) for clause in self.own]
-        self.premises = [self.system.always, *(_expression(clause) for clause in known or ())]
+        self.clauses = [expression(clause) for clause in self.own]
+        self.premises = [self.system.always, *(expression(clause) for clause in known or ())]
         self.shown = [] if known is not None else [self.system.always]
         self.later = {v: var(after(v)) for v in self.system.variables}
 
@@ -107,14 +107,34 @@ class Statements:
                 yield name, self.script(assertion, [f"{self.proof.claim}: {words}", "expected answer: unsat"])
 
 
-def _expression(clause: Clause) -> Expr:
+def expression(clause: Clause) -> Expr:
+    """A clause as a disjunction."""
     return or_(*(var(v) if bit else not_(var(v)) for v, bit in clause))
 
 
-class Certificate:
-    """Proofs about one circuit; what they share, clauses over its own variables, is shown once."""
+class Argument(Protocol):
+    """A conclusion from clauses that have been proved."""
 
-    def __init__(self, base: System, known: Sequence[Clause], proofs: Sequence[Proof]) -> None:
+    def script(self) -> str:
+        """A script that any SMT solver must answer `unsat`."""
+
+    def check(self, limits: Limits) -> None:
+        """Let z3 confirm it. Raises `CertificateFailed` and `LimitReached`."""
+
+    def as_data(self) -> list[list[str]]:
+        """Its steps for the result document."""
+
+
+class Certificate:
+    """Proofs about one circuit; what they share, clauses over its own variables, is shown once.
+
+    `arguments`: what is concluded from the clauses of the proofs.
+    """
+
+    def __init__(
+        self, base: System, known: Sequence[Clause], proofs: Sequence[Proof], arguments: Sequence[Argument] = ()
+    ) -> None:
+        self.arguments = arguments
         shared = Proof(base, FALSE, tuple(known), "the clauses over the circuit's own signals")
         self.statements = {"circuit": Statements(shared)}
         self.statements |= {f"part-{i}": Statements(proof, known) for i, proof in enumerate(proofs, 1)}
@@ -123,16 +143,20 @@ class Certificate:
         """Let z3 confirm everything. Raises `CertificateFailed`, and `LimitReached` when time is up."""
         for statements in self.statements.values():
             check(statements, limits)
+        for argument in self.arguments:
+            argument.check(limits)
 
     def scripts(self) -> dict[str, str]:
         """SMT-LIB 2.6 scripts by name, each to answer `unsat`; a part's assume what those of the circuit show."""
         parts = self.statements.items()
-        return {f"{part}-{name}": text for part, statements in parts for name, text in statements.scripts()}
+        found = {f"{part}-{name}": text for part, statements in parts for name, text in statements.scripts()}
+        return found | {f"argument-{i}": argument.script() for i, argument in enumerate(self.arguments, 1)}
 
     def as_data(self) -> dict[str, Any]:
         """For the result document: the shared clauses, and of each part its claim, observers and further clauses."""
         shared, *parts = self.statements.values()
-        return {
+        arguments = {"arguments": [argument.as_data() for argument in self.arguments]} if self.arguments else {}
+        return arguments | {
             "clauses": _texts(shared.own),
             "parts": [
                 {

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Collection, Hashable, Iterator, Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from itertools import combinations, product
 
 import numpy as np
@@ -20,7 +20,8 @@ from settled.verify.symbolic.local import Local
 from settled.verify.symbolic.simulation import FULL, Bits, Places, Simulation, Words
 
 NEAR = 10
-SHARED = 400
+SHARED = 100
+TOGETHER = 400
 WIDTH = 8
 MOMENTS = 16
 LITERALS = 3
@@ -52,9 +53,35 @@ def guessed(made: System, progress: Progress) -> list[Cube]:
     return _kept(formula, near, samples, cubes, progress)
 
 
+def guessed_about(made: System, known: Sequence[Cube], progress: Progress) -> list[Cube]:
+    """Clauses about what observers watch, inductive together with the `known` ones. Raises `LimitReached`."""
+    progress.at("random runs with observers")
+    formula = Formula(made)
+    near: dict[Shape, list[tuple[int, ...]]] = {(v,): [_watched(made, v)] for v in made.watching}
+    runs = Simulation(_eager(made), starts(formula, progress), progress)
+    samples = np.concatenate(runs.explore(np.arange(len(made.variables))), axis=1)
+    runs.spread(WIDTH)
+    samples = np.concatenate([samples, runs.sample(MOMENTS)], axis=1)
+    watching = {made.number[v] for v in made.watching}
+    cubes = [c for c in unseen(near, samples, (), [negated(c) for c in known]) if watching & set(map(abs, c))]
+    return [negated(cube) for cube in inductive(formula, cubes, known, progress)]
+
+
+def _watched(made: System, name: str) -> tuple[int, ...]:
+    """Positions of an observer, what it reads, and what that reads."""
+    excitation = made.circuit.excitation
+    read = [v for v in support(*made.one_copy[name]) if v in made.number]
+    near = dict.fromkeys([name, *read, *(r for v in read if v in excitation for r in support(excitation[v]))])
+    return tuple(made.number[v] - 1 for v in near)[:NEAR]
+
+
 def _eager(made: System) -> System:
     """The system with any number of nodes switching at once: its runs get about sooner, and show no less."""
-    return system(replace(made.circuit, winners="any", exclusive=()), made.environment)
+    eager = system(replace(made.circuit, winners="any"), made.environment, made.restraint)
+    if not made.watching:
+        return eager
+    watching = {v: made.may[v] for v in made.watching}
+    return replace(made, may={**eager.may, **watching}, selectors=tuple(dict.fromkeys((*made.selectors, *eager.selectors))))
 
 
 def _kept(
@@ -130,41 +157,53 @@ def unseen(
     hopeless: Collection[Cube] = (),
     known: Collection[Cube] = (),
 ) -> list[Cube]:
-    """Cubes of one to three literals over a neighbourhood that no sample shows, none of them within another.
+    """Cubes of one to three literals over a neighbourhood that no sample shows, none of them within another of it.
 
     `hopeless` cubes are not found; nor are `known` ones and what lies within them.
     """
-    found: set[Cube] = set()
-    outer = set(known)
+    found: dict[Cube, None] = {}
+    outer: set[tuple[int, Cube]] = set()
+    kept = set(known)
     for size in range(1, LITERALS + 1):
-        sets, groups = _sets(near, size)
-        for cube in _never(sets, groups, samples):
-            within = any(part in outer for k in range(1, size + 1) for part in combinations(cube, k))
-            if not within and cube not in hopeless:
-                found.add(cube)
-                outer.add(cube)
+        for shape, cube in _never(_sets(near, size), samples):
+            parts = [part for k in range(1, size + 1) for part in combinations(cube, k)]
+            if cube not in hopeless and not any(part in kept or (shape, part) in outer for part in parts):
+                found[cube] = None
+                outer.add((shape, cube))
     return sorted(found)
 
 
-def _sets(near: dict[Shape, list[tuple[int, ...]]], size: int) -> tuple[Places, Places]:
-    """Sets of variables, a row each, and the number of the group of sets that are alike."""
-    rows, numbers, base = [np.zeros((0, size), np.int64)], [np.zeros(0, np.int64)], 0
-    for places in near.values():
+@dataclass(frozen=True)
+class Sets:
+    """Sets of variables, a row each, with the number of the group of sets that are alike and of the group's shape."""
+
+    rows: Places
+    groups: Places
+    shapes: Places
+
+
+def _sets(near: dict[Shape, list[tuple[int, ...]]], size: int) -> Sets:
+    rows, numbers, shapes = [np.zeros((0, size), np.int64)], [np.zeros(0, np.int64)], [np.zeros(0, np.int64)]
+    base = 0
+    for shape, places in enumerate(near.values()):
         parts = np.array(list(combinations(range(len(places[0])), size)), np.int64).reshape(-1, size)
         rows.append(np.array(places, np.int64)[:, parts].reshape(-1, size))
         numbers.append(np.tile(np.arange(base, base + len(parts)), len(places)))
+        shapes.append(np.full(len(parts) * len(places), shape))
         base += len(parts)
-    return np.concatenate(rows), np.concatenate(numbers)
+    return Sets(np.concatenate(rows), np.concatenate(numbers), np.concatenate(shapes))
 
 
-def _never(sets: Places, groups: Places, samples: Words) -> Iterator[Cube]:
-    """Cubes over the sets that no sample shows, in no set of the group."""
-    size = sets.shape[1]
+def _never(sets: Sets, samples: Words) -> Iterator[tuple[int, Cube]]:
+    """Cubes over the sets that no sample shows, in no set of the group; each with the number of the shape."""
+    size = sets.rows.shape[1]
     for signs in product((False, True), repeat=size):
-        shown = np.zeros(int(groups.max(initial=-1)) + 1, bool)
-        np.logical_or.at(shown, groups, _shown(sets, signs, samples))
-        literals = (sets[~shown[groups]] + 1) * np.where(signs, 1, -1)
-        yield from (tuple(sorted(cube, key=abs)) for cube in literals.tolist())
+        shown = np.zeros(int(sets.groups.max(initial=-1)) + 1, bool)
+        np.logical_or.at(shown, sets.groups, _shown(sets.rows, signs, samples))
+        never = ~shown[sets.groups]
+        literals = (sets.rows[never] + 1) * np.where(signs, 1, -1)
+        for shape, cube in zip(sets.shapes[never].tolist(), literals.tolist(), strict=True):
+            yield shape, tuple(sorted(cube, key=abs))
 
 
 def _shown(sets: Places, signs: Sequence[bool], samples: Words) -> Bits:
@@ -203,7 +242,7 @@ def inductive(formula: Formula, cubes: Sequence[Cube], given: Sequence[Cube], pr
     """
     at_start = Query(formula, progress, [[formula.start]], steady=True)
     kept = _closed(at_start, cubes, {lit: lit for lit in formula.may})
-    reduce = _by_rounds if len(formula.state) <= SHARED else _by_neighbours
+    reduce = _by_rounds if len(formula.state) <= TOGETHER else _by_neighbours
     return reduce(formula, kept, given, progress)
 
 

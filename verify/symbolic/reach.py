@@ -15,7 +15,7 @@ from settled.verify.limits import LimitReached
 from settled.verify.questions import Task
 from settled.verify.symbolic.certificates import Clause, Proof
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
-from settled.verify.symbolic.invariants import RINGS, guessed
+from settled.verify.symbolic.invariants import RINGS, guessed, guessed_about
 from settled.verify.symbolic.local import Local
 from settled.verify.symbolic.pdr import Invariant, Path, Pdr
 from settled.verify.symbolic.unrolling import shorter
@@ -84,6 +84,11 @@ class Reacher:
             large = len(self.circuit.nodes) >= LARGE
             self._known = [_named(self.base, c) for c in guessed(self.base, self.progress)] if large else ()
         return self._known
+
+    def about(self, made: System) -> tuple[Clause, ...]:
+        """What is known, and clauses about observers that are inductive with it; the latter guessed near by."""
+        seeds = [_numbered(made, clause) for clause in self.known]
+        return (*self.known, *(_named(made, clause) for clause in guessed_about(made, seeds, self.progress)))
 
     @contextmanager
     def within(self, share: float) -> Iterator[None]:
