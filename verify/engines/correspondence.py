@@ -26,15 +26,11 @@ ATTEMPTS = 20
 
 
 def differs(task: Task, question: Differs) -> Answer:
-    """`proved` when corresponding nodes cut all loops and both circuits settle without critical races.
-
-    Takes half of the time that is left: some failures are for other engines to find.
-    """
+    """`proved` when corresponding nodes cut all loops and both circuits settle without critical races."""
     if question.transients:
         return undecided("corresponding nodes say nothing of transients", NAME)
-    task = replace(task, limits=replace(task.limits, seconds=task.limits.spent() + task.limits.left() / 2))
     try:
-        found = correspondence(task, question)
+        found = correspondence(half(task), question)
     except Different as seen:
         return undecided(str(seen), NAME)
     if found is None:
@@ -86,7 +82,12 @@ def one_end(task: Task) -> bool:
     if isinstance(known_responses.proof(task), known_responses.Established):
         return True
     needed: tuple[Question, ...] = (Oscillates(), Diverges())
-    return all(is_proved(task, task.circuit, task.environment, question) for question in needed)
+    return all(is_proved(half(task), task.circuit, task.environment, question) for question in needed)
+
+
+def half(task: Task) -> Task:
+    """The task with half of the time that is left: some failures are for other engines to find."""
+    return replace(task, limits=replace(task.limits, seconds=task.limits.spent() + task.limits.left() / 2))
 
 
 def certificate(pairs: Pairs) -> dict[str, Any]:
