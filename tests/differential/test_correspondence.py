@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Callable
 
 import oracle_equivalence
-import pytest
 from random_pairs import Pair, random_pair
 
 from settled.models.circuit import loops
@@ -14,7 +14,6 @@ from settled.verify.limits import Limits
 from settled.verify.questions import Answer, Differs, Task
 
 CASES = 1_500
-PARTS = 5
 
 
 def asked(pair: Pair) -> Answer:
@@ -32,10 +31,10 @@ def cuts_all_loops(pair: Pair, answer: Answer) -> bool:
     return True
 
 
-@pytest.mark.parametrize("part", range(PARTS))
-def test_no_proof_is_against_the_oracle(part: int) -> None:
+def test_no_proof_is_against_the_oracle(share: Callable[[int], int]) -> None:
     outcome: Counter[str] = Counter()
-    for seed in range(part, CASES, PARTS):
+    cases = share(CASES)
+    for seed in range(cases):
         pair = random_pair(f"correspondence {seed}")
         answer = asked(pair)
         if answer.verdict != "proved" and seed % 3:
@@ -48,6 +47,6 @@ def test_no_proof_is_against_the_oracle(part: int) -> None:
             assert cuts_all_loops(pair, answer), seed
             outcome["made otherwise"] += pair.original.excitation != pair.other.excitation
             outcome["inverse"] += any(sign == "~" for _, sign, _ in answer.certificate["pairs"])
-    assert outcome["refuted, undecided"] > CASES / PARTS / 20, outcome
-    assert outcome["made otherwise"] > CASES / PARTS / 2 and outcome["inverse"] > 10, outcome
+    assert outcome["refuted, undecided"] > cases / 20, outcome
+    assert outcome["made otherwise"] > cases / 2 and outcome["inverse"] > cases / 30, outcome
     assert outcome["proved, proved"] > 10 * outcome["proved, undecided"], outcome

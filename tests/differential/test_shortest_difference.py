@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Callable
 from dataclasses import replace
 from random import Random
 
@@ -40,10 +41,10 @@ def written(pair: Pair, run: Run) -> dict[str, object]:
     return {"title": run.title, "circuit": run.circuit, "steps": steps, "loop": run.loop}
 
 
-def test_no_refutation_is_against_the_oracle(monkeypatch: pytest.MonkeyPatch) -> None:
+def test_no_refutation_is_against_the_oracle(share: Callable[[int], int], monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(shortest_difference, "MOST", 6)
     outcome: Counter[str] = Counter()
-    for seed in range(CASES):
+    for seed in range(share(CASES)):
         pair = faulty(seed)
         answer = differs(Task(pair.original, pair.environment, Limits()), Differs(pair.other, pair.outputs))
         outcome[answer.verdict] += 1
@@ -58,4 +59,5 @@ def test_no_refutation_is_against_the_oracle(monkeypatch: pytest.MonkeyPatch) ->
         assert more == 0 or (more > 0 and "perhaps_fewer" in answer.facts), seed
         outcome["perhaps fewer"] += "perhaps_fewer" in answer.facts
         outcome["lonely"] += len(answer.runs) == 1
-    assert outcome["refuted"] > 100 and min(outcome[c] for c in ("single", "simultaneous", "burst")) >= 5, outcome
+    assert outcome["refuted"] > share(100), outcome
+    assert min(outcome[c] for c in ("single", "simultaneous", "burst")) >= share(5), outcome

@@ -9,10 +9,11 @@ from __future__ import annotations
 import heapq
 from collections.abc import Callable, Hashable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from functools import cache
 from itertools import count, permutations
 from typing import Any, TypeVar
 
-from oracle_world import Schedule, Situation, State, Unaskable, World, components, reach
+from oracle_world import Schedule, Situation, State, Unaskable, World, components, reach, world_of
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
@@ -41,7 +42,7 @@ def decide(circuit: Circuit, environment: Environment, check: str, options: Opti
     """The verdict on one property. Raises `Unaskable` where the question is an input error."""
     if check in FUNDAMENTAL_ONLY and environment.mode != "fundamental":
         raise Unaskable(f"`{check}` is a property of fundamental mode")
-    world = World(circuit, environment)
+    world = world_of(circuit, environment)
     if not world.vectors():
         raise Unaskable("no input vector satisfies `assume`")
     verdict = CHECKS[check](world, options)
@@ -53,14 +54,14 @@ def decide(circuit: Circuit, environment: Environment, check: str, options: Opti
 
 def reachable(circuit: Circuit, environment: Environment) -> set[State]:
     """The reachable total states, each as the set of inputs and nodes that are 1."""
-    return {at.state for at in World(circuit, environment).reachable}
+    return {at.state for at in world_of(circuit, environment).reachable}
 
 
 def outcome(
     circuit: Circuit, environment: Environment, state: State, change: frozenset[str]
 ) -> tuple[set[State], bool]:
     """The stable total states in which the response to a change can end, and whether it can oscillate for ever."""
-    world = World(circuit, environment)
+    world = world_of(circuit, environment)
     response = world.response(state, world.changes(state)[change])
     settled = {at.state for at in response if world.ended(at)}
     return settled, bool(world.oscillations(at.state for at in response if not at.waiting))
@@ -207,6 +208,7 @@ def moves_settled(world: World, state: State, order: tuple[str, ...], name: str)
     return changes
 
 
+@cache
 def has_feedback(circuit: Circuit) -> bool:
     """Whether some node's expression reads the node, directly or through others."""
 

@@ -9,7 +9,7 @@ from math import inf
 
 from oracle import Verdict
 from oracle_traces import Run, Trace, complaint, demand, read
-from oracle_world import Schedule, Situation, State, Unaskable, World
+from oracle_world import Schedule, Situation, State, Unaskable, World, world_of
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
@@ -46,7 +46,7 @@ class Pairing:
             raise Unaskable("the circuits have different inputs")
         self.outputs = tuple(original.outputs if outputs is None else outputs)
         shared = {x: v for x, v in environment.start.items() if x in (*original.inputs, *self.outputs)}
-        self.left = World(original, environment)
+        self.left = world_of(original, environment)
         self.right = World(other, replace(environment, start=shared, guards={}))
         self.both_must_pair = len(shared) == len(environment.start)
         for world in (self.left, self.right):

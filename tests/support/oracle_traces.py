@@ -10,7 +10,7 @@ from itertools import pairwise
 from typing import Any
 
 from oracle import Options, hazard_kind, power_up
-from oracle_world import Situation, State, World, components, reach
+from oracle_world import Situation, State, World, components, reach, world_of
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
@@ -41,7 +41,7 @@ def unlawful(
     circuit: Circuit, environment: Environment, states: Sequence[Mapping[str, int]], loop: int | None = None
 ) -> str | None:
     """Why these states (values by name; defined signals may be among them) are no run from a start state, if so."""
-    world = World(circuit, environment)
+    world = world_of(circuit, environment)
     return complaint(lambda: Run(world, [packed(world, s) for s in states], loop).begin_at_start())
 
 
@@ -54,7 +54,7 @@ def offending(
     facts: Mapping[str, Any] | None = None,
 ) -> str | None:
     """Why these traces do not refute the check, if so. `facts`: with a `hazard`, its signal, class and kind."""
-    world = World(circuit, environment)
+    world = world_of(circuit, environment)
 
     def judge() -> None:
         runs = [read(world, trace) for trace in traces]

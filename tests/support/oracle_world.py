@@ -11,6 +11,7 @@ expressions with its own recursion. Clarity before speed; meant for up to 5 node
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Callable, Hashable, Iterable, Iterator
 from functools import cache, cached_property
 from itertools import combinations, permutations
@@ -96,6 +97,7 @@ class World:
 
     def __init__(self, circuit: Circuit, environment: Environment) -> None:
         self.circuit, self.environment = circuit, environment
+        self.starts = cache(self._starts)
         self.excited = cache(self._excited)
         self.admits = cache(self._admits)
         self.willing = cache(self._willing)
@@ -197,7 +199,7 @@ class World:
         """Whether inputs change in stable total states only."""
         return self.environment.mode == "fundamental"
 
-    def starts(self) -> set[State]:
+    def _starts(self) -> set[State]:
         """The total states in which runs begin. Raises `Unaskable` when there is none."""
         wanted = self.environment.start
         found = {
@@ -291,3 +293,15 @@ class World:
         """
         must = frozenset(x for x in self.circuit.inputs if self.environment.guard(x).must)
         return self.excited(state) | {x for x in self.willing(state) & must if self.admits(state ^ {x})}
+
+
+_recent: deque[World] = deque(maxlen=4)
+
+
+def world_of(circuit: Circuit, environment: Environment) -> World:
+    """The world of a circuit in an environment: the one that was made last for the two, with what it knows."""
+    for world in _recent:
+        if world.circuit is circuit and world.environment is environment:
+            return world
+    _recent.append(World(circuit, environment))
+    return _recent[-1]

@@ -13,7 +13,7 @@ from random import Random
 from typing import Any, NamedTuple
 
 from oracle import FUNDAMENTAL_ONLY
-from oracle_world import Unaskable, World
+from oracle_world import Unaskable, World, world_of
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment, Guard
@@ -213,7 +213,7 @@ def random_environment(
 
 def with_start(rng: Random, circuit: Circuit, environment: Environment) -> Environment:
     """The environment with some signals' values in one of its start states as `start`."""
-    world = World(circuit, environment)
+    world = world_of(circuit, environment)
     state = rng.choice(sorted(world.starts(), key=sorted))
     signals = [*circuit.inputs, *circuit.nodes, *circuit.defined]
     named = rng.sample(signals, rng.choice((0, 0, len(signals) // 2, len(signals))))
@@ -257,7 +257,7 @@ def random_options(rng: Random, circuit: Circuit, environment: Environment, chec
     """Options of a check on this circuit."""
     signals = [*circuit.inputs, *circuit.nodes, *circuit.defined]
     maker = OPTIONS.get(check)
-    return maker(rng, signals, World(circuit, environment)) if maker else {}
+    return maker(rng, signals, world_of(circuit, environment)) if maker else {}
 
 
 def _bounds(rng: Random, _signals: list[str], _world: World) -> dict[str, Any]:

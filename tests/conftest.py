@@ -1,0 +1,19 @@
+"""How many random circuits the loops over engines and rules go through: a quarter of them, or all."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import pytest
+
+
+def pytest_addoption(parser: pytest.Parser) -> None:
+    """The option for the long way."""
+    parser.addoption("--thorough", action="store_true", help="loops over engines and rules in full, not a quarter")
+
+
+@pytest.fixture
+def share(request: pytest.FixtureRequest) -> Callable[[int], int]:
+    """Of so many random circuits those that are looked at now."""
+    thorough = request.config.getoption("--thorough")
+    return lambda count: count if thorough else count // 4
