@@ -10,7 +10,7 @@ from settled.models.logic import TRUE, support, to_text
 from settled.models.specification import CircuitSource
 
 MODELS = {
-    "feedback": "feedback (only the feedback lines carry a delay, all other gates none)",
+    "feedback": "feedback (each node carries a delay, all other gates none)",
     "gate": "gate (every gate output carries a delay; wires have none: a promise of the layout)",
     "wire": "wire (every gate output and every connection carries a delay)",
     "table": "none (a flow table settles in one step)",
