@@ -1,4 +1,4 @@
-"""The start states as packed words: by evaluation from the inputs and a cut of the loops, or else by SAT."""
+"""The start states as packed words: by SAT where few, else by evaluation from the inputs and a cut of the loops."""
 
 from __future__ import annotations
 
@@ -12,44 +12,37 @@ from settled.models.components import components
 from settled.models.logic import Expr, Program, support
 from settled.verify.limits import Limits
 
-OPEN = 22
+NARROW, OPEN = 12, 22
+"""Inputs and nodes of a cut up to which evaluation is quicker than SAT, and up to which it is possible."""
+
+FEW = 256
 
 
 def starts(packed: Packed, limits: Limits) -> Words:
     """All start states, in increasing order."""
-    words = settled_words(packed) if packed.fundamental else any_words(packed)
-    if words is None:
-        return _by_sat(packed, limits)
+    circuit = packed.circuit
+    cut = some_cut(circuit.excitation) if packed.fundamental else circuit.nodes
+    free = [s for s in (*circuit.inputs, *cut) if s not in packed.environment.start]
+    if len(free) > NARROW:
+        found = _by_sat(packed, limits, FEW if len(free) <= OPEN else None)
+        if found is not None:
+            return found
+    words = _all_values(packed, cut)
     return np.unique(words[_may_start(packed, words)])
 
 
-def settled_words(packed: Packed) -> Words | None:
-    """Words that hold every stable total state: all values of inputs and of a cut of the loops, the rest follows."""
-    circuit = packed.circuit
-    cut = some_cut(circuit.excitation)
-    words = _all_values(packed, [*circuit.inputs, *cut])
-    if words is None:
-        return None
+def _all_values(packed: Packed, cut: Sequence[str]) -> Words:
+    """Words with all values of inputs and of a cut of the loops that `start` allows; the other nodes follow."""
+    circuit, given = packed.circuit, packed.environment.start
+    names = (*circuit.inputs, *cut)
+    words = np.full(1, sum(1 << circuit.place[n] for n in names if given.get(n)), np.uint64)
+    for name in names:
+        if name not in given:
+            words = np.concatenate([words, words | np.uint64(1 << circuit.place[name])])
     for name in order_without(circuit, cut):
         program = Program([circuit.excitation[name]])
         value = packed.mask(packed.values(program, words), words, circuit.place[name])
         words = words | value
-    return words
-
-
-def any_words(packed: Packed) -> Words | None:
-    """Words that hold every total state with the start values of inputs and nodes."""
-    return _all_values(packed, packed.circuit.signals)
-
-
-def _all_values(packed: Packed, names: Sequence[str]) -> Words | None:
-    place, given = packed.circuit.place, packed.environment.start
-    words = np.full(1, sum(1 << place[n] for n in names if given.get(n)), np.uint64)
-    free = [n for n in names if n not in given]
-    if len(free) > OPEN:
-        return None
-    for name in free:
-        words = np.concatenate([words, words | np.uint64(1 << place[name])])
     return words
 
 
@@ -60,11 +53,14 @@ def _may_start(packed: Packed, words: Words) -> Bits:
     return good & (packed.excited(words) == 0) if packed.fundamental else good
 
 
-def _by_sat(packed: Packed, limits: Limits) -> Words:
+def _by_sat(packed: Packed, limits: Limits, most: int | None) -> Words | None:
+    """All start states; None when they are more than `most`."""
     from settled.verify.stable_states import start_states
 
-    found = []
+    found: list[int] = []
     for state in start_states(packed.circuit, packed.environment):
+        if len(found) == most:
+            return None
         found.append(state)
         limits.tick(len(found), 0)
     return np.array(sorted(found), np.uint64)
