@@ -110,12 +110,12 @@ def multiplexers(seed: int) -> Pair:
 
 def test_transients_are_compared_as_the_oracle_compares_them() -> None:
     verdicts: Counter[str] = Counter()
-    for seed in range(200):
+    for seed in range(100):
         for pair in (random_pair(f"transients {seed}"), multiplexers(seed)):
             found, verdict = against_transients(pair)
             assert not found, (seed, found)
             verdicts[verdict] += 1
-    assert min(verdicts[v] for v in ("proved", "refuted", "hazard")) > 30, verdicts
+    assert min(verdicts[v] for v in ("proved", "refuted", "hazard")) > 15, verdicts
 
 
 @pytest.mark.parametrize("part", range(PARTS))

@@ -38,12 +38,12 @@ def test_every_verdict_is_the_oracles(check: str, mode: str | None) -> None:
 @pytest.mark.parametrize("check", ["always", "never", "settles"])
 def test_other_checks_in_input_output_mode(check: str) -> None:
     verdicts: Counter[str] = Counter()
-    for seed in range(150):
+    for seed in range(80):
         question = random_question(f"free {seed}", check, mode="input-output")
         found, verdict = complaints(*question[:2], check, question.options)
         assert not found, (seed, found)
         verdicts[verdict] += 1
-    assert min(verdicts["proved"], verdicts["refuted"]) > 10, verdicts
+    assert min(verdicts["proved"], verdicts["refuted"]) > 5, verdicts
 
 
 @pytest.mark.parametrize("patience", [0, fair_cycles.PATIENCE])
@@ -51,14 +51,14 @@ def test_many_lassos_are_shown_and_all_are_fair(patience: int, monkeypatch: pyte
     """Also when the search for the shortest one is given up at once."""
     monkeypatch.setattr(fair_cycles, "PATIENCE", patience)
     shown: Counter[str] = Counter()
-    for seed in range(150):
+    for seed in range(80):
         case = random_question(f"lasso {seed}", "leads-to", mode="input-output")
         session = session_of(*case[:2], (Property("goal", "leads-to", case.options),))
         (result,) = session.results()
         for trace in document([session.report([result])])["files"][0]["results"][0]["traces"]:
             assert oracle_traces.offending(*case[:2], "leads-to", case.options, [trace]) is None, seed
             shown["end" if trace["loop"] is None else "loop"] += 1
-    assert min(shown["loop"], shown["end"]) > 20, shown
+    assert min(shown["loop"], shown["end"]) > 10, shown
 
 
 @pytest.mark.parametrize("check", [*CHECKS, "settles"])

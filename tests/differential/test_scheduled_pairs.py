@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Callable
 
 import oracle_equivalence
 from random_pairs import random_pair
@@ -18,9 +19,9 @@ from settled.verify.replay import replay
 CASES = 500
 
 
-def test_every_decision_is_the_oracles() -> None:
+def test_every_decision_is_the_oracles(share: Callable[[int], int]) -> None:
     outcome: Counter[str] = Counter()
-    for seed in range(CASES):
+    for seed in range(share(CASES)):
         pair = random_pair(f"scheduled {seed}")
         question = Differs(pair.other, pair.outputs)
         answer = attempt(ENGINE, Task(pair.original, pair.environment, Limits()), question)
@@ -37,5 +38,5 @@ def test_every_decision_is_the_oracles() -> None:
             assert more == 0 or (more > 0 and "perhaps_fewer" in answer.facts), seed
             outcome["shortest"] += answer.facts["fewest_changes"] == expected.facts["fewest_changes"]
             replay(KIND, Behaviour(pair.original, pair.environment), question, answer)
-    assert min(outcome["proved"], outcome["refuted"]) > CASES / 8, outcome
+    assert min(outcome["proved"], outcome["refuted"]) > share(CASES) / 8, outcome
     assert outcome["shortest"] > 0.9 * outcome["refuted"], outcome

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Callable
 from random import Random
 
 from random_pairs import random_pair, rewritten
@@ -13,9 +14,9 @@ from settled.verify.limits import Limits
 from settled.verify.questions import Differs, Task
 
 
-def test_a_proof_is_never_against_the_search() -> None:
+def test_a_proof_is_never_against_the_search(share: Callable[[int], int]) -> None:
     outcome: Counter[str] = Counter()
-    for seed in range(600):
+    for seed in range(share(600)):
         pair = random_pair(f"cheap {seed}")
         other = rewritten(Random(seed), pair.original) if seed % 2 else pair.other
         question = Differs(other, pair.outputs)
@@ -27,4 +28,4 @@ def test_a_proof_is_never_against_the_search() -> None:
         elif seed % 2:
             outcome["racy though rewritten"] += 1
             assert found.reason is not None and "does not settle, or" in found.reason, seed
-    assert outcome["proved"] > 100 and outcome["racy though rewritten"] > 10, outcome
+    assert outcome["proved"] > share(100) and outcome["racy though rewritten"] > share(10), outcome
