@@ -62,8 +62,8 @@ def least_lasso(
 ) -> tuple[Key, Lasso] | None:
     """The least lasso, with its input changes and steps, the return included; None without `cores`.
 
-    The least one as long as a core has at most 200 states; a larger one is entered at the 200 nearest of them. Very
-    long cycles may not be the shortest.
+    The least one as long as a core has at most 200 states; a larger one is entered at the 200 nearest of them, those
+    with the least values first. Very long cycles may not be the shortest.
     """
     length, found = shortest_cycles(graph, edges, pressing, cores, approach)
     if not found:
@@ -85,7 +85,7 @@ def shortest_cycles(
     found: list[Cycle] = []
     length = FAR
     core_at = cache(lambda number: Core(graph, edges, pressing, cores[number]))
-    for entry, number in sorted(_entries(cores, approach.key), key=lambda e: (approach.key(e[0]), e[0])):
+    for entry, number in sorted(_entries(graph, cores, approach.key), key=lambda e: (approach.key(e[0]), e[0])):
         changes, steps = approach.key(entry)
         if (changes, steps + 2) > length:
             break
@@ -97,9 +97,10 @@ def shortest_cycles(
     return length, found
 
 
-def _entries(cores: list[Places], key: Callable[[int], Key]) -> Iterator[tuple[int, int]]:
+def _entries(graph: Graph, cores: list[Places], key: Callable[[int], Key]) -> Iterator[tuple[int, int]]:
     for number, core in enumerate(cores):
-        for entry in sorted(core.tolist(), key=lambda v: (key(v), v))[:ENTRIES]:
+        order = dict(zip(core.tolist(), values(graph.packed, graph.vertices[core].tolist()), strict=True))
+        for entry in sorted(order, key=lambda v: (key(v), order[v]))[:ENTRIES]:
             yield entry, number
 
 
