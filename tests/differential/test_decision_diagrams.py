@@ -33,7 +33,7 @@ MODES: dict[str, dict[str, Any]] = {
     "input-output": {"mode": "input-output"},
 }
 FUNDAMENTAL_ONLY = ("race-free", "hazard-free")
-CASES = 35
+CASES = 25
 
 
 def judged(check: str, questions: list[Question]) -> Counter[str]:

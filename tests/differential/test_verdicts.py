@@ -9,7 +9,7 @@ from judging import complaints
 from random_circuits import random_question
 
 CHECKS = ("stable-states", "settles", "race-free", "hazard-free", "essential-hazard-free", "always", "never")
-CASES = 400
+CASES = 300
 
 
 @pytest.mark.parametrize("check", CHECKS)

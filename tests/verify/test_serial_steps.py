@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 from random_circuits import random_case
 
@@ -23,16 +25,16 @@ def cores(graph: Responses) -> set[frozenset[int]]:
     return {frozenset(graph.vertices[core].tolist()) for core in graph.cores}
 
 
-def test_reached_states_and_oscillations_are_the_same() -> None:
+def test_reached_states_and_oscillations_are_the_same(share: Callable[[int], int]) -> None:
     fewer = 0
-    for seed in range(300):
+    for seed in range(share(300)):
         circuit, _ = random_case(f"serial {seed}")
         for word in range(0, 1 << len(circuit.signals), 3):
             some, every = graphs(circuit, word)
             assert some.vertices.tolist() == every.vertices.tolist(), (seed, word)
             assert cores(some) == cores(every), (seed, word)
             fewer += len(some.step_edges.source) < len(every.step_edges.source)
-    assert fewer > 100
+    assert fewer > share(100)
 
 
 def test_nodes_that_read_one_another_switch_together_and_others_one_by_one() -> None:
