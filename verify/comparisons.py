@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from functools import partial
 from itertools import pairwise
 from typing import Any
 
@@ -19,6 +18,9 @@ History = tuple[tuple[int, ...], ...]
 """The changes that a run has been through: for each the packed sets of inputs that changed, one set an instant."""
 
 Hazard = Callable[[History], tuple[str, dict[str, Any]]]
+
+LISTED = 32
+"""Signals up to which a total state is written out in a sentence."""
 
 KEPT = ("fewest_changes", "in_step", "partners", "races", "perhaps_fewer")
 
@@ -59,8 +61,17 @@ def circuit_side(behaviour: Behaviour, outputs: Sequence[str], needs_partners: b
         lambda state: value(circuit, signals, state),
         starts_under,
         needs_partners,
-        partial(describe, circuit),
+        lambda state: in_words(circuit, outputs, state),
     )
+
+
+def in_words(circuit: Circuit, outputs: Sequence[str], state: int) -> str:
+    """A total state in words; of a wide circuit its inputs and the compared outputs."""
+    if len(circuit.signals) <= LISTED:
+        return describe(circuit, state)
+    shown = (*circuit.inputs, *outputs)
+    values = value(circuit, map(circuit.signal, shown), state)
+    return " ".join(f"{s}={v}" for s, v in zip(shown, values, strict=True))
 
 
 def judge(

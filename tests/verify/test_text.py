@@ -271,3 +271,12 @@ def test_progress_is_one_line_on_a_terminal_and_nothing_elsewhere(monkeypatch: p
     line, blank, rest = terminal.getvalue().removeprefix("\r").split("\r")
     assert line.startswith("race-free: 12,000 total states!!!") and len(line) <= 58 and rest == ""
     assert blank.strip() == "" and len(blank) >= len(line) and pipe.getvalue() == ""
+
+
+def test_nodes_that_would_take_too_many_blocks_are_shown_as_they_switch() -> None:
+    result_ = result("refuted", traces=(wide(*range(20)),))
+    lines = table(result_, WIDE, width=30)
+    assert "".join("".join(lines).split()).count("u5.cell.node+") == 1
+    assert sum(line.startswith("step") for line in lines) < 4
+    last = " ".join(lines[-3:])
+    assert last.endswith("The values of 29 more nodes would take too many columns; --all-signals shows them.")

@@ -118,7 +118,8 @@ def in_lockstep(replies: Sequence[ScheduledReplies], found: Unrolled) -> tuple[l
             break
         in_step.append([len(path) - 1 for path in paths])
         for side, path in zip(replies, paths, strict=True):
-            path += side.run(path[-1], schedule(change, found.environment.changes))[1:]
+            then = schedule(change, found.environment.changes)
+            path += side.run_to(path[-1], then, side.run(path[-1], then)[-1])[1:]
     return paths, in_step
 
 

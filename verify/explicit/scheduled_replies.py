@@ -16,7 +16,7 @@ import numpy as np
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import Program
-from settled.models.states import Behaviour
+from settled.models.states import Behaviour, excited
 from settled.verify.explicit.replies import Reply
 from settled.verify.explicit.starts import order_without
 from settled.verify.limits import LimitReached, Limits
@@ -180,9 +180,21 @@ class ScheduledReplies:
         return run
 
     def run_to(self, state: int, schedule: Schedule, end: int) -> list[int]:
-        """The run of a response that has been found to end there."""
+        """The run of a response that has been found to end there; that of all nodes at once, where it does, too."""
         run = self.run(state, schedule)
         assert run[-1] == end, "the same schedule comes to the same end"
+        at_once = self._at_once(state, schedule, len(run))
+        return at_once if at_once[-1] == end else run
+
+    def _at_once(self, state: int, schedule: Schedule, most: int) -> list[int]:
+        """A run in which every excited node switches in every step, cut off after so many states."""
+        run = [state]
+        if self.circuit.winners == "one" or self.circuit.exclusive:
+            return run
+        for instant in schedule:
+            run.append(run[-1] ^ instant)
+            while len(run) < most and (moved := excited(self.circuit, run[-1])):
+                run.append(run[-1] ^ moved)
         return run
 
     def lasso(self, state: int, schedule: Schedule) -> tuple[list[int], int]:

@@ -2,7 +2,7 @@
 
 Runs that begin alike share their beginning; each ending follows under its title. Of circuits too wide for the page
 the nodes are left out that keep their value and are never excited, unless the page is to show the whole; what is still
-too wide comes in several blocks.
+too wide comes in several blocks, and what takes too many of them shows its nodes only as they switch.
 """
 
 from __future__ import annotations
@@ -16,6 +16,9 @@ from settled.models.circuit import Circuit
 from settled.verify.properties import kinds
 from settled.verify.renderers.page import Page, columns, pad, visible
 from settled.verify.result import Result, Step, Trace
+
+BLOCKS = 4
+"""How many blocks a table may take before its nodes are left out."""
 
 PIECE = 4
 """Columns that a piece of a broken name is filled up to."""
@@ -125,11 +128,18 @@ def table(parts: Sequence[Section], circuit: Circuit, page: Page, margin: str) -
     everything = tuple(shown[0].step.state)
     active = tuple(s for s in everything if page.whole or _counts(s, shown, circuit))
     for signals, broken in ((everything, False), (active, False), (active, True)):
+        if len(signals) > room and not broken:
+            continue
         values = [_values(s, shown, page, broken) for s in signals]
         found = blocks([_switched(shown, page), *values, _notes(shown)], room)
         if len(found) == 1:
             break
     else:
+        found = blocks([_switched(shown, page), _notes(shown), *values], room)
+    crowded = len(found) > BLOCKS and not page.whole
+    if crowded:
+        signals = tuple(s for s in active if _is_port(s, circuit))
+        values = [_values(s, shown, page, True) for s in signals]
         found = blocks([_switched(shown, page), _notes(shown), *values], room)
     lines = page.wrap(f"{parts[0].title}:", margin) if len(parts) == 1 else []
     for number, block in enumerate(found):
@@ -138,7 +148,9 @@ def table(parts: Sequence[Section], circuit: Circuit, page: Page, margin: str) -
     left_out = len(everything) - len(signals)
     if left_out:
         what = "node keeps its" if left_out == 1 else "nodes keep their"
-        lines += page.wrap(f"{left_out} more {what} value all along, never excited.", margin)
+        idle = f"{left_out} more {what} value all along, never excited."
+        many = f"The values of {left_out} more nodes would take too many columns; --all-signals shows them."
+        lines += page.wrap(many if crowded else idle, margin)
     return lines
 
 
@@ -158,9 +170,14 @@ def blocks(found: Sequence[Column], room: int) -> list[list[Column]]:
 
 def _counts(signal: str, shown: Sequence[Row], circuit: Circuit) -> bool:
     """Whether a signal belongs into a table from which idle nodes are left out; single states have none."""
-    if not any(row.number for row in shown) or signal not in circuit.nodes or signal in circuit.outputs:
+    if not any(row.number for row in shown) or _is_port(signal, circuit):
         return True
     return len({row.step.state[signal] for row in shown}) > 1 or any(signal in row.step.excited for row in shown)
+
+
+def _is_port(signal: str, circuit: Circuit) -> bool:
+    """Whether a signal is no inner node; `circuit` may be the other one of a comparison."""
+    return signal in circuit.inputs or signal in circuit.outputs or signal in circuit.defined
 
 
 def _steps(shown: Sequence[Row]) -> Column:
