@@ -125,7 +125,8 @@ def _file(report: FileReport) -> dict[str, Any]:
     }
     results = [_result(r) for r in report.results]
     sources = {"sources": dict(report.inputs)} if report.inputs else {}
-    return {"file": report.file, "title": report.title, "circuit": circuit, **sources, "results": results}
+    echo = {"understood": [list(line) for line in report.understood]} if report.understood else {}
+    return {"file": report.file, "title": report.title, "circuit": circuit, **sources, **echo, "results": results}
 
 
 def _result(r: Result) -> dict[str, Any]:

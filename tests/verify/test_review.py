@@ -73,9 +73,17 @@ def test_a_pipe_gets_every_verdict_as_it_was_first_shown(result: Path) -> None:
     again = review(result)
     assert again.exit_code == 0 and "\x1b" not in again.stdout
     seconds = re.compile(r"in [0-9.]+ s,\s")
-    verdicts = [seconds.sub("", shown[shown.index("\nrefuted ") :]) for shown in (first, again.stdout)]
-    assert "".join(verdicts[0].split()) == "".join(verdicts[1].split())
+    one, two = ("".join(seconds.sub("", shown).split()) for shown in (first, again.stdout))
+    assert one == two and "everystabletotalstate" in one
     assert review(result.parent).stdout == again.stdout
+
+
+def test_a_document_without_the_echo_is_shown_with_the_names_in_it(result: Path, tmp_path: Path) -> None:
+    data = json.loads(result.read_text())
+    del data["files"][0]["understood"]
+    (tmp_path / "other.json").write_text(json.dumps(data))
+    shown = review(tmp_path / "other.json")
+    assert shown.exit_code == 0 and "  delay model  feedback\n" in shown.stdout
 
 
 def test_only_some_properties(result: Path) -> None:

@@ -40,16 +40,7 @@ def in_full(files: Sequence[Reviewed], page: Page) -> str:
     """Every property with its runs, as it was shown when it was decided."""
     parts = []
     for file in files:
-        parts.append(text.opening(file.file, file.title, _lines(file), page))
+        parts.append(text.opening(file.file, file.title, file.understood, page))
         parts += [text.verdict(result, file.circuit, page) for result in file.results]
     parts.append(text.closing([result for file in files for result in file.results], (), page))
     return "\n".join(parts)
-
-
-def _lines(file: Reviewed) -> list[tuple[str, str]]:
-    """What the document says of the circuit."""
-    c = file.circuit
-    names = [
-        (what, ", ".join(n) or "none") for what, n in (("inputs", c.inputs), ("nodes", c.nodes), ("outputs", c.outputs))
-    ]
-    return [("circuit", c.name), *names, ("delay model", c.delay), ("winners", c.winners)]

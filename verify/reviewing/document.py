@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import os
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
@@ -26,7 +26,8 @@ Names = tuple[str, ...]
 
 @dataclass(frozen=True)
 class Reviewed:
-    """One file of a result document. `sources`: the SHA-256 of every file that was read for it, by path.
+    """One file of a result document. `sources`: the SHA-256 of every file that was read for it, by path;
+    `understood`: what the verdicts rest on, as lines of a label and what is said.
 
     The circuit has names only: what excites its nodes does not stand in the document.
     """
@@ -36,6 +37,7 @@ class Reviewed:
     circuit: Circuit
     results: tuple[Result, ...]
     sources: Mapping[str, str]
+    understood: tuple[tuple[str, str], ...]
 
 
 def read_document(path: str, only: Sequence[str] = ()) -> list[Reviewed]:
@@ -92,7 +94,7 @@ def _unknown(path: str, name: str, known: Sequence[str]) -> Problem:
 
 def _with(file: Reviewed, only: Sequence[str]) -> Reviewed:
     kept = tuple(r for r in file.results if not only or r.name in only)
-    return Reviewed(file.file, file.title, file.circuit, kept, file.sources)
+    return replace(file, results=kept)
 
 
 # ---- the form of the document ------------------------------------------------------------------------------------
@@ -191,6 +193,7 @@ class _File(_Part):
     circuit: _Circuit
     results: tuple[_Result, ...]
     sources: dict[str, str] = {}
+    understood: tuple[tuple[str, str], ...] = ()
 
 
 class _Document(_Part):
@@ -204,7 +207,15 @@ def _reviewed(path: str, data: _File) -> Reviewed:
     c = data.circuit
     circuit = Circuit(c.name, c.inputs, c.nodes, {}, c.outputs, delay=c.delay, winners=c.winners)
     results = tuple(_result(path, result) for result in data.results)
-    return Reviewed(data.file, data.title, circuit, results, data.sources)
+    understood = data.understood or _named(circuit)
+    return Reviewed(data.file, data.title, circuit, results, data.sources, understood)
+
+
+def _named(circuit: Circuit) -> tuple[tuple[str, str], ...]:
+    """What a document says of a circuit that does not repeat the echo."""
+    named = (("inputs", circuit.inputs), ("nodes", circuit.nodes), ("outputs", circuit.outputs))
+    lines = [(what, ", ".join(names) or "none") for what, names in named]
+    return (("circuit", circuit.name), *lines, ("delay model", circuit.delay), ("winners", circuit.winners))
 
 
 def _result(path: str, data: _Result) -> Result:
