@@ -10,6 +10,7 @@ from itertools import count, product
 from math import inf
 from typing import Any
 
+import oracle_equivalence
 import pytest
 from normal_forms import SHOWN
 from oracle_world import State, World
@@ -17,6 +18,7 @@ from published_cases import Subject, cases
 
 from settled.models.problems import InputError
 from settled.verify.inputs import gallery
+from settled.verify.questions import Differs
 from settled.verify.session import Session, Settings, load
 
 CHECKS = ("stable-states", "settles", "race-free", "hazard-free", "essential-hazard-free", "speed-independent")
@@ -101,6 +103,16 @@ def test_the_runs_of_a_published_circuit(data: dict[str, Any], request: pytest.F
     if len(data["excitation"]) > MANY and not data["inputs"] and not request.config.getoption("--thorough"):
         pytest.skip("brute force goes round every loop of a closed circuit: only with --thorough")
     assert all(agrees(published_session(data)))
+
+
+@pytest.mark.parametrize("name", ["equivalence_agreement", "equivalence_flip_flop_together", "equivalence_level_latch"])
+def test_the_changes_that_tell_two_circuits_of_the_gallery_apart(name: str) -> None:
+    session = Session(load(gallery()[name]), Settings())
+    (result,) = (r for r in session.results() if r.verdict == "refuted")
+    assert isinstance(result.question, Differs)
+    sides = session.circuit, result.question.other, session.specification.environment
+    verdict = oracle_equivalence.equivalent(*sides, result.question.outputs)
+    assert verdict.facts["fewest_changes"] == result.facts["fewest_changes"] > 0
 
 
 def test_the_run_of_a_larger_handshake() -> None:
