@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from pathlib import Path
 from typing import Any
 
@@ -101,6 +102,15 @@ def test_a_difference_is_shown_by_both_runs_in_step() -> None:
         assert steps[0]["state"]["q"] == steps[1]["state"]["q"]
 
 
+def test_input_changes_of_both_runs_have_the_same_numbers_and_times() -> None:
+    said = run("nor.toml", "once.toml", "--environment", "calm.toml", "--out", "out").stdout
+    changes = [line.split()[1] for line in said.splitlines() if "input change " in line]
+    assert changes == ["s+", "s-", "r+", "r-", "s+"] * 2 and said.count("input change 5") == 2
+    dumps = [Path(f"out/nor/equivalent-{number}.vcd").read_text() for number in (1, 2)]
+    times = [re.findall(r"#(\d+)\n[01][!\"]", dump) for dump in dumps]
+    assert times[0] == times[1] and len(times[0]) == 5
+
+
 def test_ports_that_do_not_match_are_named_together_with_the_nearest_names() -> None:
     Path("odd.toml").write_text(
         RENAMED.replace('outputs = ["q"]', 'outputs = ["p"]').replace('q = "', 'p = "').replace("& q", "& p")
@@ -109,6 +119,14 @@ def test_ports_that_do_not_match_are_named_together_with_the_nearest_names() -> 
     assert result.exit_code == 2 and "Traceback" not in result.stderr
     for part in ("`odd` has no input `s`", "`nor` has no input `set`", "`odd` has no signal `q`", "--rename a=b"):
         assert part in result.stderr
+
+
+def test_circuits_of_one_name_are_told_apart_and_the_only_name_left_is_near() -> None:
+    Path("other").mkdir()
+    Path("other/nor.toml").write_text(NOR.replace('"s"', '"trip"').replace("(s ", "(trip "))
+    said = run("nor.toml", "other/nor.toml").stderr
+    assert "`nor` has no input `trip`; did you mean `s`?" in said
+    assert "`nor (other)` has no input `s`; did you mean `trip`?" in said
 
 
 def test_names_can_be_mapped() -> None:

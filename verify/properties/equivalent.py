@@ -22,10 +22,10 @@ from settled.verify.questions import Answer, Differs
 def _question(circuit: Circuit, options: Options) -> Differs:
     """Raises `InputError` when the circuits cannot be compared."""
     outputs = tuple(options.get("outputs", circuit.outputs))
-    other = placed(options["to"])
+    other = replace(placed(options["to"]), name=_name(circuit, options))
     check_ports(circuit, other, outputs)
     shown = tuple(dict.fromkeys([*outputs, *other.outputs]))
-    facing = replace(other, name=_name(circuit, options), inputs=circuit.inputs, outputs=shown)
+    facing = replace(other, inputs=circuit.inputs, outputs=shown)
     return Differs(facing, outputs, options.get("transients", False))
 
 
@@ -38,8 +38,9 @@ def _name(circuit: Circuit, options: Options) -> str:
 def check_ports(circuit: Circuit, other: Circuit, outputs: Sequence[str]) -> None:
     """Raise `InputError`, naming everything that does not match, when two circuits have no common ports."""
     theirs = [*other.inputs, *other.nodes, *other.defined]
-    notes = [_missing(other.name, "input", x, other.inputs) for x in circuit.inputs if x not in other.inputs]
-    notes += [_missing(circuit.name, "input", x, circuit.inputs) for x in other.inputs if x not in circuit.inputs]
+    ours, only = ([x for x in a.inputs if x not in b.inputs] for a, b in ((circuit, other), (other, circuit)))
+    notes = [_missing(other.name, "input", x, only) for x in ours]
+    notes += [_missing(circuit.name, "input", x, ours) for x in only]
     notes += [_missing(other.name, "signal", z, theirs) for z in outputs if z not in theirs]
     if notes:
         message = f"`{circuit.name}` and `{other.name}` cannot be compared: their ports differ"
@@ -50,7 +51,7 @@ def check_ports(circuit: Circuit, other: Circuit, outputs: Sequence[str]) -> Non
 
 
 def _missing(circuit: str, what: str, name: str, known: Sequence[str]) -> str:
-    near = nearest(name, known)
+    near = nearest(name, known) or (f"did you mean `{known[0]}`?" if len(known) == 1 else "")
     return f"`{circuit}` has no {what} `{name}`{f'; {near}' if near else ''}"
 
 

@@ -104,12 +104,21 @@ def _note(number: int, trace: Trace, result: Result, circuit: Circuit) -> str:
     hazard = "hazard" in facts and trace is result.traces[-1]
     decided = {id(t): place for t, place in zip(result.traces, facts.get("decided_at") or (), strict=False)}
     said = [
-        "input change" if any(name in circuit.inputs for name in step.switched) else "",
+        _change(number, trace, result) if any(name in circuit.inputs for name in step.switched) else "",
         f"{facts['hazard']['signal']} changes again" if hazard and number == facts.get("offending_step") else "",
         "decided" if number == decided.get(id(trace)) else "",
         "stable" if step.stable else "",
     ]
     return ", ".join(filter(None, said))
+
+
+def _change(number: int, trace: Trace, result: Result) -> str:
+    """The runs of a comparison count their input changes, so that those of the other run are found beside them."""
+    stops = result.facts.get("in_step", ())
+    if len(stops) < 2:
+        return "input change"
+    side = [id(t) for t in result.traces].index(id(trace))
+    return f"input change {sum(stop[side] < number for stop in stops)}"
 
 
 def _return(trace: Trace, loop: int, circuit: Circuit) -> Row:

@@ -1,6 +1,7 @@
 """Waveforms: a value change dump (IEEE 1364) of each run, for the viewer that people already have.
 
-Untimed runs take one second a step, which nobody takes for a delay. A loop is gone round twice and closed.
+Untimed runs take one second a step, which nobody takes for a delay. A loop is gone round twice and closed. In the
+dumps of a comparison each input change has the same time.
 """
 
 from __future__ import annotations
@@ -33,14 +34,28 @@ def to_vcd(trace: Trace, result: Result) -> str:
     number = writer.register_var(about, "step", "integer", 32, init=0)
     stable = writer.register_var(about, "stable", "wire", 1, init=int(step.stable))
     places = unroll(trace, ROUNDS)
-    for time, place in enumerate(places):
+    times = moments(trace, result, len(places))
+    for time, place in zip(times, places, strict=True):
         step = trace.steps[place]
         for name, value in step.state.items():
             writer.change(signals[name], time, value)
         writer.change(number, time, place)
         writer.change(stable, time, int(step.stable))
-    writer.close(len(places))
+    writer.close(times[-1] + 1)
     return out.getvalue()
+
+
+def moments(trace: Trace, result: Result, count: int) -> list[int]:
+    """The second of each step; the runs of a comparison wait for each other before each input change."""
+    stops: Sequence[Sequence[int]] = result.facts.get("in_step", ())
+    side = [id(t) for t in result.traces].index(id(trace)) if stops else 0
+    times, wait, before = [], 0, [0, 0]
+    for i in range(count):
+        for stop in (s for s in stops if s[side] == i - 1):
+            wait += max(a - b for a, b in zip(stop, before, strict=True)) - (stop[side] - before[side])
+            before = list(stop)
+        times.append(i + wait)
+    return times
 
 
 def _clock(trace: Trace) -> str:
