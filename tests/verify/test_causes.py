@@ -207,6 +207,18 @@ def test_identities_survive_other_orders_and_a_gate_more(kind: str) -> None:
     assert several > 2
 
 
+def test_a_race_in_a_circuit_too_wide_for_a_search_is_explained_in_its_core() -> None:
+    behind = "".join(f'w{i} = "{f"w{i - 1}" if i else "q"} ^ d"\n' for i in range(80))
+    wide = LATCH.replace('q = "take | keep"\n', f'q = "take | keep"\n{behind}').split("[[property]]")[0]
+    wide += '[environment]\nstart = { q = 1, g = 1 }\n[[property]]\ncheck = "race-free"\n'
+    narrow = wide.replace(behind, "")
+    (result,), (alone,) = (check("latch.toml", text=text).results for text in (wide, narrow))
+    assert len(result.traces[0].steps[0].state) > 80
+    assert result.facts["cause"] == alone.facts["cause"]
+    race = result.facts["race"]
+    assert race["early"] in result.traces[race["trace"]].steps[race["step"]].switched
+
+
 def test_all_on_the_command_line_in_text_and_in_the_document() -> None:
     shown = CliRunner().invoke(app, ["check", "--all", "--only", "hazard-free", "-"], input=LATCH)
     assert shown.exit_code == 1

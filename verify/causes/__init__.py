@@ -26,12 +26,18 @@ def explain(behaviour: Behaviour, question: Question, runs: Sequence[Run], facts
         fault = hazard_cause(behaviour, runs[0].states, signal, facts["before"], facts["offending_step"])
         return {"fault": fault, "cause": hazard_identity(signal, fault)}
     if isinstance(question, Diverges):
-        states, limits = [run.states for run in runs], Limits(SECONDS, STATES)
-        found = race_cause(behaviour, states, facts["before"], limits)
-        with suppress(TooWide, LimitReached):
-            found |= {"cause": race_identity(Cores(behaviour, limits).events(states, facts["before"]))}
-        return found
+        return _race(behaviour, [run.states for run in runs], facts["before"])
     return {}
+
+
+def _race(behaviour: Behaviour, runs: Sequence[Sequence[int]], begin: int) -> dict[str, Any]:
+    """The facts about a race, of its core alone where the circuit is too wide; without any where that is, too."""
+    limits = Limits(SECONDS, STATES)
+    cores, found = Cores(behaviour, limits), race_cause(behaviour, runs, begin, limits)
+    with suppress(TooWide, LimitReached):
+        found = found or cores.facts(runs, begin)
+        found["cause"] = race_identity(cores.events(runs, begin))
+    return found
 
 
 def race_identity(events: Sequence[str]) -> str:

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import replace
+from typing import Any
 
 import numpy as np
 
@@ -40,20 +41,38 @@ class Cores:
 
         `begin`: the position of the stable state before the change. Raises `LimitReached` and `TooWide`.
         """
-        one, two = (unpack(self.circuit, states[-1]) for states in runs)
-        core = self._core({n for n in self.circuit.nodes if one[n] != two[n]})
-        packed = self._cut[core] = self._cut.get(core) or Packed(*self._cut_out(core))
-        ways = [[pack(packed.circuit, unpack(self.circuit, state)) for state in states[begin:]] for states in runs]
+        core, packed, ways = self._project(runs, begin)
         behaviour = Behaviour(packed.circuit, packed.environment)
         begun = sorted(firsts(behaviour, ways, 0, packed))
         key = (core, ways[0][0], *begun, *sorted(way[-1] for way in ways))
         if key not in self._known:
-            graph = Response(packed, self.limits, np.array(begun, np.uint64))
-            if graph.unfinished:
-                raise LimitReached(graph.unfinished)
+            graph = self._response(packed, begun)
             race = Race(behaviour, graph, _least(graph, ways), 0).facts()["race"]
             self._known[key] = (*sorted(race["fork"].split("/")), race["early"], race["late"])
         return self._known[key]
+
+    def facts(self, runs: Sequence[States], begin: int) -> dict[str, Any]:
+        """`decided_at` and `race` as far as the core is concerned, for circuits that are too wide as a whole."""
+        _, packed, ways = self._project(runs, begin)
+        behaviour = Behaviour(packed.circuit, packed.environment)
+        graph = self._response(packed, list(firsts(behaviour, ways, 0, packed)))
+        found = Race(behaviour, graph, ways, 0).facts()
+        race = found["race"] | {"step": found["race"]["step"] + begin}
+        return {"decided_at": [step + begin for step in found["decided_at"]], "race": race}
+
+    def _project(self, runs: Sequence[States], begin: int) -> tuple[tuple[str, ...], Packed, list[list[int]]]:
+        """The core of a race, the circuit of it alone, and the runs from `begin` on as that circuit sees them."""
+        one, two = (unpack(self.circuit, states[-1]) for states in runs)
+        core = self._core({n for n in self.circuit.nodes if one[n] != two[n]})
+        packed = self._cut[core] = self._cut.get(core) or Packed(*self._cut_out(core))
+        ways = [[pack(packed.circuit, unpack(self.circuit, state)) for state in states[begin:]] for states in runs]
+        return core, packed, ways
+
+    def _response(self, packed: Packed, begun: Sequence[int]) -> Response:
+        graph = Response(packed, self.limits, np.array(begun, np.uint64))
+        if graph.unfinished:
+            raise LimitReached(graph.unfinished)
+        return graph
 
     def _core(self, differing: set[str]) -> tuple[str, ...]:
         """The nodes that can act on the first loops in which two ends differ, by name."""
