@@ -10,6 +10,7 @@ from settled.encodings.packed import TooWide
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.flow_table import Entry, FlowTable
+from settled.models.logic import support
 from settled.models.problems import InputError, Problem
 from settled.verify.engines.pair_search import Original
 from settled.verify.explicit.starts import starts
@@ -25,11 +26,15 @@ Place = tuple[int, int]
 
 @dataclass
 class Behaved:
-    """Where the circuit goes: by place the internal state after settling, and the outputs where it is stable."""
+    """Where the circuit goes: by place the internal state after settling, and the outputs where it is stable.
+
+    `strict`: what is not specified must stay so, for guards forbid it that the table cannot tell.
+    """
 
     after: dict[Place, int] = field(default_factory=dict)
     outputs: dict[Place, tuple[int, ...]] = field(default_factory=dict)
     vectors: int = 0
+    strict: bool = False
 
 
 def flow_table(circuit: Circuit, environment: Environment, limits: Limits) -> FlowTable:
@@ -66,7 +71,8 @@ def _check(circuit: Circuit, environment: Environment) -> None:
 
 def _explore(circuit: Circuit, environment: Environment, limits: Limits) -> Behaved:
     original = Original(Task(circuit, environment, limits), Differs(circuit, circuit.outputs))
-    found, width = Behaved(vectors=1 << len(circuit.inputs)), len(circuit.inputs)
+    width = len(circuit.inputs)
+    found = Behaved(vectors=1 << width, strict=_guards_read_nodes(circuit, environment))
     layer: list[int] = starts(original.guards, limits).tolist()
     seen = set(layer)
     while layer:
@@ -86,6 +92,11 @@ def _explore(circuit: Circuit, environment: Environment, limits: Limits) -> Beha
         seen |= fresh
         limits.tick(len(seen), 0)
     return found
+
+
+def _guards_read_nodes(circuit: Circuit, environment: Environment) -> bool:
+    read = support(*(e for guard in environment.guards.values() for e in (guard.rises, guard.falls)))
+    return not {*circuit.inputs, *circuit.outputs}.issuperset(read)
 
 
 def _one_end(original: Original, state: int, instant: int) -> int:
@@ -128,6 +139,8 @@ def _together(classes: dict[int, int], one: int, other: int, behaved: Behaved) -
         for vector in range(behaved.vectors):
             after = [behaved.after[row, vector] for row in members if (row, vector) in behaved.after]
             if len({behaved.outputs[row, vector] for row in after}) > 1:
+                return None
+            if behaved.strict and 0 < len(after) < len(members):
                 return None
             todo += pairwise(after)
     return found

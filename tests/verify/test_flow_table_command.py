@@ -115,3 +115,34 @@ def test_a_circuit_without_a_flow_table_is_refused_with_the_reason(change: tuple
     Path("odd.toml").write_text(LATCH.replace(*change))
     result = run("table", "--flow", "odd.toml")
     assert result.exit_code == 2 and said.rstrip(": ") in result.stderr
+
+
+GUARDED = (
+    LATCH
+    + """
+[environment]
+start = { d = 0, g = 0, k = 0 }
+[environment.inputs]
+d = { falls = "~k" }
+[[property]]
+check = "realises"
+table = { file = "latch.csv" }
+"""
+)
+
+
+def test_guards_that_the_table_cannot_tell_are_in_its_unspecified_entries() -> None:
+    Path("asked.toml").write_text(GUARDED)
+    Path("latch.csv").write_text("d g / q, 00, 01, 11, 10\na, (a)/0, (a)/0, (a)/1, (a)/0\n")
+    printed = run("table", "--flow", "asked.toml").stdout
+    assert printed.splitlines()[-1].split() == ["b,", "-,", "-,", "(b)/1,", "(b)/1"]
+    Path("latch.csv").write_text(printed)
+    assert run("check", "asked.toml").exit_code == 0
+
+
+def test_a_difference_that_such_a_guard_may_forbid_is_none() -> None:
+    Path("asked.toml").write_text(GUARDED)
+    Path("latch.csv").write_text(FLOW.replace("b,       (b)/1, a", "b,       (b)/0, a"))
+    result = run("check", "asked.toml")
+    assert result.exit_code == 3
+    assert "the guard of d reads `k`, which the flow table does not have" in " ".join(result.stdout.split())
