@@ -2,7 +2,8 @@
 
 A failure that is known bounds the search for the least one: no run of it has more input changes. So exhaustive search
 is asked once more, only that deep. Where that takes too many total states, it is asked for the least runs from the same
-start state in which nothing switches but what switches in the runs known.
+start state in which nothing switches but what switches in the runs known. Beyond that, switchings that a failure along
+one run does not need are left out.
 """
 
 from __future__ import annotations
@@ -18,11 +19,12 @@ import numpy as np
 from settled.encodings.packed import Packed, TooWide, Words
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment
-from settled.models.states import Run
+from settled.models.states import Behaviour, Run
 from settled.verify.engines import attempt, exhaustive
 from settled.verify.explicit.graph import Graph
 from settled.verify.explicit.stable_counts import least_miscount, least_round
-from settled.verify.limits import LimitReached
+from settled.verify.limits import LimitReached, Limits
+from settled.verify.needed import only_needed
 from settled.verify.questions import Answer, Deadlocks, Flickers, Question, Reaches, StableCount, Task, Withdraws
 
 STATES, SECONDS = 300_000, 10.0
@@ -46,7 +48,8 @@ def shortened(task: Task, question: Question, answer: Answer) -> Answer:
         if again.verdict == "refuted":
             kept = {k: v for k, v in answer.facts.items() if k not in again.facts or k == "some_run_settles"}
             return replace(answer, runs=again.runs, facts={**again.facts, **kept})
-    return answer
+    behaviour = Behaviour(task.circuit, task.environment)
+    return only_needed(behaviour, question, answer, Limits(min(SECONDS, task.limits.seconds)))
 
 
 def _least_count(task: Task, question: StableCount, answer: Answer) -> Answer:
