@@ -47,7 +47,8 @@ def _offends(behaviour: Behaviour, question: PowersUp, answer: Answer) -> tuple[
         raise ValueError("a run ends before the whole sequence has been applied")
     if one.states[-1] == two.states[-1]:
         raise ValueError("both runs end in the same total state")
-    ends = " or ".join(describe(circuit, run.states[-1]) for run in answer.runs)
+    apart = [s for s in circuit.nodes if (one.states[-1] ^ two.states[-1]) >> circuit.place[s] & 1]
+    ends = " or ".join(describe(circuit, run.states[-1], apart) for run in answer.runs)
     sentence = f"After {_vectors(circuit, question.vectors)} the circuit can end with {ends}."
     return sentence, {**facts, "oscillates": False, "after_vectors": len(question.vectors)}
 
@@ -60,7 +61,8 @@ def _restless(behaviour: Behaviour, run: Run) -> str:
     if len({s & circuit.input_mask for s in circle}) != 1 or excited_throughout(circuit, circle):
         raise ValueError("the loop is not fair, or its inputs are not held")
     moving = [n for n in circuit.nodes if len({s >> circuit.place[n] & 1 for s in circle}) > 1]
-    return f"the circuit can go round for ever: {', '.join(moving[:8])} never come to rest"
+    rest = "never comes to rest" if len(moving) == 1 else "never come to rest"
+    return f"the circuit can go round for ever: {', '.join(moving[:8])} {rest}"
 
 
 def _vectors(circuit: Circuit, vectors: Sequence[int]) -> str:

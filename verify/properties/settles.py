@@ -33,7 +33,8 @@ def _offends(behaviour: Behaviour, _: Oscillates, answer: Answer) -> tuple[str, 
         raise ValueError(f"`{waiting[0]}` stays excited all round the loop: the loop is not fair")
     moving = [n for n in circuit.nodes if len({s >> circuit.place[n] & 1 for s in loop}) > 1]
     shown = ", ".join(moving[:8]) + (", ..." if len(moving) > 8 else "")
-    return f"The circuit can go round for ever with its inputs held: {shown} never come to rest.", {}
+    rest = "never comes to rest" if len(moving) == 1 else "never come to rest"
+    return f"The circuit can go round for ever with its inputs held: {shown} {rest}.", {}
 
 
 KIND = Kind(
