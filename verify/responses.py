@@ -6,7 +6,10 @@ from collections.abc import Iterator, Sequence
 
 from settled.models.circuit import Circuit
 from settled.models.components import components
-from settled.models.states import Behaviour, Run, Situation, excited, walk
+from settled.models.states import Behaviour, Run, Situation, excited, value, walk
+
+LISTED = 32
+"""Signals up to which a total state is written out in a sentence."""
 
 
 def response(behaviour: Behaviour, states: Sequence[int]) -> set[Situation]:
@@ -49,9 +52,19 @@ def changed_inputs(circuit: Circuit, before: int, after: int) -> str:
     return ", ".join(moved(circuit, before & circuit.input_mask, after & circuit.input_mask))
 
 
-def describe(circuit: Circuit, state: int) -> str:
-    """A total state in words: `s=0 r=1 q=0` (nodes of connections left out)."""
-    return " ".join(f"{s}={state >> i & 1}" for i, s in enumerate(circuit.signals) if ">" not in s)
+def describe(circuit: Circuit, state: int, also: Sequence[str] = ()) -> str:
+    """A total state in words: `s=0 r=1 q=0`, nodes of connections left out.
+
+    Of a wide circuit the inputs, the outputs and what is named in `also`, and how many nodes more the run shows.
+    """
+    signals = [s for s in circuit.signals if ">" not in s]
+    shown = signals
+    if len(signals) > LISTED:
+        shown = list(dict.fromkeys([*circuit.inputs, *circuit.outputs, *also]))
+    values = value(circuit, map(circuit.signal, shown), state)
+    said = " ".join(f"{s}={v}" for s, v in zip(shown, values, strict=True))
+    left = len(set(signals) - set(shown))
+    return said + (f" ({left} nodes more in the run)" if left else "")
 
 
 def excited_throughout(circuit: Circuit, states: Sequence[int]) -> list[str]:

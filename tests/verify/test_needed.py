@@ -91,4 +91,5 @@ def test_of_a_wide_circuit_only_the_gates_that_matter_switch_before_the_failure(
     (trace,) = result.traces
     switched = {s for step in trace.steps[: result.facts["offending_step"] + 1] for s in step.switched}
     assert len(trace.steps[0].state) > 63
+    assert result.claim.startswith("After g+ from d=") and "(80 nodes more in the run)" in result.claim
     assert switched <= {"g", "gn", "n18", "take18", "keep18", "s18", "n19", "take19", "keep19", "s19"}
