@@ -180,5 +180,6 @@ def _open(answer: Answer) -> str:
     names = dict.fromkeys(race["circuit"] for race in answer.facts.get("races", ()))
     whose = " and ".join(names)
     if names:
-        return f" ({whose} can itself end in different states on the way: see the property `race-free`)"
+        alone = "itself" if len(names) == 1 else "each"
+        return f" ({whose} can {alone} end in different states on the way: see the property `race-free`)"
     return " (perhaps fewer do, for some response may have several ends)" if "perhaps_fewer" in answer.facts else ""

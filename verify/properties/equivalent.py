@@ -39,8 +39,9 @@ def check_ports(circuit: Circuit, other: Circuit, outputs: Sequence[str]) -> Non
     """Raise `InputError`, naming everything that does not match, when two circuits have no common ports."""
     theirs = [*other.inputs, *other.nodes, *other.defined]
     ours, only = ([x for x in a.inputs if x not in b.inputs] for a, b in ((circuit, other), (other, circuit)))
-    notes = [_missing(other.name, "input", x, only) for x in ours]
-    notes += [_missing(circuit.name, "input", x, ours) for x in only]
+    sole = len(ours) == len(only) == 1
+    notes = [_missing(other.name, "input", x, only, sole) for x in ours]
+    notes += [_missing(circuit.name, "input", x, ours, sole) for x in only]
     notes += [_missing(other.name, "signal", z, theirs) for z in outputs if z not in theirs]
     if notes:
         message = f"`{circuit.name}` and `{other.name}` cannot be compared: their ports differ"
@@ -50,8 +51,8 @@ def check_ports(circuit: Circuit, other: Circuit, outputs: Sequence[str]) -> Non
         raise InputError(Problem("nothing-to-compare", f"`{circuit.name}` has no outputs to compare", help="list some"))
 
 
-def _missing(circuit: str, what: str, name: str, known: Sequence[str]) -> str:
-    near = nearest(name, known) or (f"did you mean `{known[0]}`?" if len(known) == 1 else "")
+def _missing(circuit: str, what: str, name: str, known: Sequence[str], sole: bool = False) -> str:
+    near = f"did you mean `{known[0]}`?" if sole else nearest(name, known)
     return f"`{circuit}` has no {what} `{name}`{f'; {near}' if near else ''}"
 
 
