@@ -160,7 +160,7 @@ def test_a_circuit_whose_own_race_leaves_its_output_open_is_not_equivalent_to_it
     found = document("racy.toml", "racy.toml", "--environment", "resting.toml")
     assert found["claim"] == (
         "After s+ from s=0 r=0 m=0 q=0 and s=0 r=0 m=0 q=0: q is 0 in racy and 1 in racy (other) "
-        "(racy and racy (other) can itself end in different states on the way: see the property `race-free`)."
+        "(racy and racy (other) can each end in different states on the way: see the property `race-free`)."
     )
 
 
