@@ -17,6 +17,8 @@ from settled.verify.limits import Limits
 from settled.verify.needed import only_needed
 from settled.verify.properties import kinds
 from settled.verify.questions import Answer, Question, Reaches, Task
+from settled.verify.renderers.page import Page
+from settled.verify.renderers.trace_text import tables
 from settled.verify.replay import replay
 
 
@@ -87,9 +89,12 @@ def test_of_a_wide_circuit_only_the_gates_that_matter_switch_before_the_failure(
     names = [(f"s{i - 1}" if i else "d", "gn" if i % 2 else "g") for i in range(20)]
     row = "".join(stage.format(i=i, d=d, g=g) for i, (d, g) in enumerate(names))
     text = f'[circuit]\ninputs = ["d", "g"]\noutputs = ["s19"]\n[circuit.excitation]\ngn = "~g"\n{row}'
-    (result,) = check("row.toml", text=f'{text}[[property]]\ncheck = "hazard-free"\n').results
+    report = check("row.toml", text=f'{text}[[property]]\ncheck = "hazard-free"\n')
+    (result,) = report.results
     (trace,) = result.traces
     switched = {s for step in trace.steps[: result.facts["offending_step"] + 1] for s in step.switched}
     assert len(trace.steps[0].state) > 63
     assert result.claim.startswith("After g+ from d=") and "(80 nodes more in the run)" in result.claim
     assert switched <= {"g", "gn", "n18", "take18", "keep18", "s18", "n19", "take19", "keep19", "s19"}
+    shown = tables(result, report.circuit, Page(120), "")
+    assert shown[-1].endswith(" more nodes do not switch before the failure.") and len(shown[-1].split()[0]) == 2

@@ -22,7 +22,7 @@ from settled.verify.renderers.file_names import numbered, pieces, stems
 from settled.verify.renderers.page import visible
 from settled.verify.renderers.timing_diagram import Lanes, Stretch
 from settled.verify.renderers.timing_diagram import pieces as drawings
-from settled.verify.renderers.trace_text import Row, beginning, rows
+from settled.verify.renderers.trace_text import Row, beginning, idle, left_out, rows, until_failure
 from settled.verify.result import FileReport, Result, Step, Trace, circuits
 
 WIDE, NARROW = 16, 7
@@ -86,6 +86,7 @@ class Group:
     shared: Panel | None
     panels: list[Panel]
     idle: list[Bit]
+    left_out: str
     table: table_drawing.Drawing | None
 
 
@@ -193,7 +194,9 @@ def _group(report: FileReport, result: Result, circuit: Circuit, places: Sequenc
     traces = [result.traces[place] for place in places]
     numbers = [first + place for place in places]
     common = beginning(traces) if len(traces) > 1 else 0
-    shown, idle = _parted(traces, circuit)
+    names = list(traces[0].steps[0].state)
+    quiet = idle(traces, result, circuit) if len(names) > UNFOLDED else frozenset()
+    shown = [name for name in names if name not in quiet]
     view = _View(result, circuit, shown)
     shared = view.panel(traces[0], "Common beginning", (0, common), numbers, None) if common else None
     panels = [
@@ -201,22 +204,9 @@ def _group(report: FileReport, result: Result, circuit: Circuit, places: Sequenc
         for n, trace in zip(numbers, traces, strict=True)
     ]
     table = table_drawing.draw(circuit, report.environment, traces)
-    still = [Bit(name, traces[0].steps[0].state[name], False, False) for name in idle]
-    return Group(circuit.name, shared, panels, still, table)
-
-
-def _parted(traces: Sequence[Trace], circuit: Circuit) -> tuple[list[str], list[str]]:
-    """The signals that are shown, and those that are folded away: nodes that keep their value, never excited."""
-    steps = [step for trace in traces for step in trace.steps]
-    names = list(steps[0].state)
-    if len(names) <= UNFOLDED:
-        return names, []
-    quiet = {
-        n
-        for n in circuit.nodes
-        if n not in circuit.outputs and len({s.state[n] for s in steps}) == 1 and not any(n in s.excited for s in steps)
-    }
-    return [n for n in names if n not in quiet], [n for n in names if n in quiet]
+    still = [Bit(name, traces[0].steps[0].state[name], False, False) for name in names if name in quiet]
+    said = left_out(len(still), until_failure(traces, result))
+    return Group(circuit.name, shared, panels, still, said, table)
 
 
 class _View:

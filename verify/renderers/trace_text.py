@@ -1,14 +1,14 @@
 """Runs as tables: a line a step, a column a signal, excited values with an asterisk.
 
 Runs that begin alike share their beginning; each ending follows under its title. Of circuits too wide for the page
-the nodes are left out that keep their value and are never excited, unless the page is to show the whole; what is still
+the nodes are left out that play no part, unless the page is to show the whole; what is still
 too wide comes in several blocks, and what takes too many of them shows its nodes only as they switch.
 """
 
 from __future__ import annotations
 
 import re
-from collections.abc import Sequence
+from collections.abc import Sequence, Set
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -64,8 +64,37 @@ def tables(result: Result, circuit: Circuit, page: Page, margin: str) -> list[st
     lines: list[str] = []
     for number, group in enumerate(alike.values()):
         lines += [""] if number else []
-        lines += table(sections(group, result, circuit), circuit, page, margin)
+        quiet = frozenset() if page.whole else idle(group, result, circuit)
+        lines += table(sections(group, result, circuit), circuit, page, margin, quiet, until_failure(group, result))
     return lines
+
+
+def until_failure(traces: Sequence[Trace], result: Result) -> int | None:
+    """The step in which a hazard shows, of the run that shows it; None for other runs."""
+    shows = "hazard" in result.facts and len(traces) == 1 and traces[0] is result.traces[-1]
+    return result.facts["offending_step"] if shows else None
+
+
+def idle(traces: Sequence[Trace], result: Result, circuit: Circuit) -> frozenset[str]:
+    """The inner nodes that play no part in runs over the same signals; single states have none.
+
+    They keep their value and are never excited or, in a run through a hazard, do not switch before it shows.
+    """
+    if all(len(trace.steps) == 1 for trace in traces):
+        return frozenset()
+    last = until_failure(traces, result)
+    if last is None:
+        active = {s for t in traces for step in t.steps for s in (*step.switched, *step.excited)}
+    else:
+        active = {s for step in traces[0].steps[: last + 1] for s in step.switched}
+    return frozenset(s for s in traces[0].steps[0].state if s not in active and not _is_port(s, circuit))
+
+
+def left_out(count: int, last: int | None) -> str:
+    """What is said of so many idle nodes."""
+    if last is not None:
+        return f"{count} more {'node does' if count == 1 else 'nodes do'} not switch before the failure"
+    return f"{count} more {'node keeps its' if count == 1 else 'nodes keep their'} value all along, never excited"
 
 
 def sections(traces: Sequence[Trace], result: Result, circuit: Circuit) -> list[Section]:
@@ -130,12 +159,14 @@ def _return(trace: Trace, loop: int, circuit: Circuit) -> Row:
 # ---- the table ---------------------------------------------------------------------------------------------------
 
 
-def table(parts: Sequence[Section], circuit: Circuit, page: Page, margin: str) -> list[str]:
-    """Lines of one table, in as few blocks as the page needs."""
+def table(
+    parts: Sequence[Section], circuit: Circuit, page: Page, margin: str, quiet: Set[str], last: int | None
+) -> list[str]:
+    """Lines of one table, in as few blocks as the page needs; `quiet` nodes are left out where that helps."""
     shown = [row for part in parts for row in part.rows]
     room = page.width - len(margin) - _steps(shown).width
     everything = tuple(shown[0].step.state)
-    active = tuple(s for s in everything if page.whole or _counts(s, shown, circuit))
+    active = tuple(s for s in everything if s not in quiet)
     for signals, broken in ((everything, False), (active, False), (active, True)):
         if len(signals) > room and not broken:
             continue
@@ -154,12 +185,10 @@ def table(parts: Sequence[Section], circuit: Circuit, page: Page, margin: str) -
     for number, block in enumerate(found):
         lines += [""] if number else []
         lines += _block([_steps(shown), *block], parts, page, margin)
-    left_out = len(everything) - len(signals)
-    if left_out:
-        what = "node keeps its" if left_out == 1 else "nodes keep their"
-        idle = f"{left_out} more {what} value all along, never excited."
-        many = f"The values of {left_out} more nodes would take too many columns; --all-signals shows them."
-        lines += page.wrap(many if crowded else idle, margin)
+    more = len(everything) - len(signals)
+    if more:
+        many = f"The values of {more} more nodes would take too many columns; --all-signals shows them."
+        lines += page.wrap(many if crowded else f"{left_out(more, last)}.", margin)
     return lines
 
 
@@ -175,13 +204,6 @@ def blocks(found: Sequence[Column], room: int) -> list[list[Column]]:
         groups[-1].append(column)
         used += need
     return groups
-
-
-def _counts(signal: str, shown: Sequence[Row], circuit: Circuit) -> bool:
-    """Whether a signal belongs into a table from which idle nodes are left out; single states have none."""
-    if not any(row.number for row in shown) or _is_port(signal, circuit):
-        return True
-    return len({row.step.state[signal] for row in shown}) > 1 or any(signal in row.step.excited for row in shown)
 
 
 def _is_port(signal: str, circuit: Circuit) -> bool:

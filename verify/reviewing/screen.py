@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable
 
 from settled.verify.renderers.cause_text import faults
 from settled.verify.renderers.page import Page, columns, visible
-from settled.verify.renderers.trace_text import Row, rows
+from settled.verify.renderers.trace_text import Row, idle, left_out, rows, until_failure
 from settled.verify.result import Step
 from settled.verify.reviewing.reasons import Reasons
 from settled.verify.reviewing.walk import Walk
@@ -74,21 +74,16 @@ def _line(walk: Walk, row: Row, place: int, width: int, page: Page) -> str:
 
 
 def _state(walk: Walk, page: Page) -> list[str]:
-    """The values in the present step; of many nodes those are only counted that move in none of the runs."""
+    """The values in the present step; of many nodes those are only counted that play no part in the runs."""
     circuit, step = walk.here.file.circuit, walk.trace.steps[walk.step]
     inner = [s for s in step.state if s not in circuit.inputs]
-    folded = len(inner) > UNFOLDED and not page.whole
-    steps = [s for t in walk.traces if t.circuit == walk.trace.circuit for s in t.steps]
-    quiet = {s for s in inner if s not in circuit.outputs and not _moves(steps, s)}
-    idle = quiet if folded else set()
+    alike = [trace for trace in walk.traces if trace.circuit == walk.trace.circuit]
+    quiet = idle(alike, walk.here.result, circuit) if len(inner) > UNFOLDED and not page.whole else frozenset()
     lines = page.wrap(_values(step, [s for s in step.state if s in circuit.inputs]), "inputs  ")
-    shown = _values(step, [s for s in inner if s not in idle])
-    lines += page.wrap(shown + (f" ({len(idle)} more that never move)" if idle else ""), "nodes   ")
+    shown = _values(step, [s for s in inner if s not in quiet])
+    said = f" ({left_out(len(quiet), until_failure(alike, walk.here.result))})" if quiet else ""
+    lines += page.wrap(shown + said, "nodes   ")
     return lines
-
-
-def _moves(steps: Sequence[Step], signal: str) -> bool:
-    return any(signal in s.excited or s.state[signal] != steps[0].state[signal] for s in steps)
 
 
 def _values(step: Step, signals: Iterable[str]) -> str:
