@@ -80,7 +80,8 @@ def choices(mask: int, winners: str) -> Iterator[int]:
 
 def switchings(circuit: Circuit, mask: int) -> Iterator[int]:
     """What may switch in one step of a circuit when the members of `mask` may: not both nodes of an exclusive pair."""
-    return (part for part in choices(mask, circuit.winners) if all(part & pair != pair for pair in circuit.pairs))
+    parts, pairs = choices(mask, circuit.winners), circuit.pairs
+    return (part for part in parts if all(part & pair != pair for pair in pairs)) if pairs else parts
 
 
 def successors(circuit: Circuit, state: int) -> Iterator[int]:
