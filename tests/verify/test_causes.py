@@ -21,9 +21,11 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import and_, not_, var
 from settled.models.specification import Property
-from settled.verify import check
+from settled.verify import causes, check
 from settled.verify.cli import app
 from settled.verify.inputs import gallery
+from settled.verify.renderers.page import Page
+from settled.verify.renderers.text import verdict
 from settled.verify.result import Result, document
 from settled.verify.session import Settings
 
@@ -217,6 +219,15 @@ def test_a_race_in_a_circuit_too_wide_for_a_search_is_explained_in_its_core() ->
     assert result.facts["cause"] == alone.facts["cause"]
     race = result.facts["race"]
     assert race["early"] in result.traces[race["trace"]].steps[race["step"]].switched
+
+
+def test_a_race_whose_core_is_too_wide_says_so(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(causes, "STATES", 3)
+    report = check("latch.toml", text=LATCH, only=["race-free"])
+    (result,) = report.results
+    assert "race" not in result.facts and "cause" not in result.facts
+    shown = " ".join(verdict(result, report.circuit, Page(100)).split())
+    assert "the fault is not singled out: limit of 3 total states reached" in shown
 
 
 def test_all_on_the_command_line_in_text_and_in_the_document() -> None:

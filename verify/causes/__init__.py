@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from contextlib import suppress
 from hashlib import sha256
 from typing import Any
 
@@ -31,13 +30,13 @@ def explain(behaviour: Behaviour, question: Question, runs: Sequence[Run], facts
 
 
 def _race(behaviour: Behaviour, runs: Sequence[Sequence[int]], begin: int) -> dict[str, Any]:
-    """The facts about a race, of its core alone where the circuit is too wide; without any where that is, too."""
+    """The facts about a race, of its core alone where the circuit is too wide; where that is, too, only why."""
     limits = Limits(SECONDS, STATES)
     cores, found = Cores(behaviour, limits), race_cause(behaviour, runs, begin, limits)
-    with suppress(TooWide, LimitReached):
-        found = found or cores.facts(runs, begin)
-        found["cause"] = race_identity(cores.events(runs, begin))
-    return found
+    try:
+        return {**(found or cores.facts(runs, begin)), "cause": race_identity(cores.events(runs, begin))}
+    except (TooWide, LimitReached) as error:
+        return found or {"no_fault": str(error)}
 
 
 def race_identity(events: Sequence[str]) -> str:

@@ -15,6 +15,8 @@ def faults(result: Result) -> list[str]:
     """The ordering decision that is the fault of a race or hazard, in sentences; none where causes are listed."""
     if result.facts.get("causes"):
         return []
+    if "no_fault" in result.facts:
+        return [f"the fault is not singled out: {result.facts['no_fault']}"]
     named = f"; cause {result.facts['cause']}" if "cause" in result.facts else ""
     if "race" in result.facts:
         fault, decided = _race(result.facts, [trace.title for trace in result.traces])
