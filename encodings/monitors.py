@@ -6,7 +6,7 @@ They turn questions about runs into questions whether a state can be reached.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 from settled.encodings.system import Observer, Restraint, System, system
 from settled.models.circuit import Circuit
@@ -66,4 +66,27 @@ def returning(circuit: Circuit, environment: Environment, nodes: Sequence[str]) 
         moved = or_(calm, now, xor(var(n), copy))
         observers.append(Observer(calm.name, FALSE, ite(saving, now, and_(saved, moved))))
         back += [not_(xor(var(n), copy)), calm]
+    return made.observed(observers, [SAVE]), and_(*back)
+
+
+def evading(made: System, far: Expr, presses: Mapping[str, Expr]) -> tuple[System, Expr]:
+    """The system in which a state with `far` true may be saved, which is forgotten when `far` is no longer true; and
+    the condition that the saved state came again by a fair run, which may be to stay where it is.
+
+    Fair: for each variable in `presses` there was a moment at which it did not press with its saved value. Liveness to
+    safety, as in `returning`.
+    """
+    saved, save = var(SAVED), var(SAVE)
+    saving = and_(save, not_(saved), far)
+    observers = [Observer(SAVED, FALSE, or_(saving, and_(saved, far)))]
+    back = [saved, far]
+    for v in made.base:
+        copy, calm = var(f"{v} {SAVED}"), var(f"{v} was calm")
+        observers.append(Observer(copy.name, FALSE, ite(saving, var(v), copy)))
+        back.append(not_(xor(var(v), copy)))
+        if v in presses:
+            now = not_(presses[v])
+            moved = or_(calm, now, xor(var(v), copy))
+            observers.append(Observer(calm.name, FALSE, ite(saving, now, and_(saved, moved))))
+            back.append(calm)
     return made.observed(observers, [SAVE]), and_(*back)

@@ -64,6 +64,11 @@ class System:
         return (*self.circuit.signals, *map(outstanding, waiting_inputs(self.circuit, self.environment)))
 
     @cached_property
+    def environs(self) -> tuple[str, ...]:
+        """The variables of the environment: inputs, and what is outstanding."""
+        return tuple(v for v in self.base if v not in self.circuit.excitation)
+
+    @cached_property
     def one_copy(self) -> Mapping[str, May]:
         """`may` over the present and the selectors alone: what speaks of values after the step is spelt out."""
         names = {after(v): self.may[v][1] for v in self.base if self.may[v][0] is not_(self.may[v][1])}

@@ -33,7 +33,7 @@ RULES = [
     ("race-free", "no_disabling_ring"),
     ("race-free", "two_runs"),
 ]
-CHECKS = list(dict.fromkeys(check for check, _ in RULES))
+CHECKS = [*dict.fromkeys(check for check, _ in RULES), "leads-to"]
 
 
 def some_question(seed: str, check: str, **limits: int) -> Question:

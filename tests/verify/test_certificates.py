@@ -43,10 +43,10 @@ def answers(text: str) -> str:
     return "".join(said).strip()
 
 
-@pytest.mark.parametrize("kind", ["never", "hazard-free", "settles", "race-free", "speed-independent"])
+@pytest.mark.parametrize("kind", ["never", "hazard-free", "settles", "race-free", "speed-independent", "leads-to"])
 def test_another_solver_accepts_the_scripts_of_every_proof(kind: str) -> None:
     count = 0
-    for seed in range(25):
+    for seed in range(35):
         question = random_question(f"scripts {seed}", kind, nodes=4)
         task = Task(question.circuit, question.environment, Limits())
         answer = reach.answer(task, kinds()[kind].question(question.circuit, question.options))

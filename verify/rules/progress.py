@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
-from settled.encodings.monitors import waiting_for
+from dataclasses import replace
+
+from settled.encodings.monitors import SAVED, evading, waiting_for
+from settled.encodings.motions import pressing
 from settled.encodings.system import System
 from settled.models.logic import FALSE, Expr, and_
 from settled.verify.questions import Evades, Question
@@ -32,9 +35,8 @@ def constant_in_the_end(reacher: Reacher, question: Evades) -> Outcome:
     """
     made, far = waiting(reacher, question)
     world = World(made, ())
-    finder = Finder(world, far, reacher.about(made), reacher.progress)
-    finder.run()
-    if not finder.closed:
+    finder = Finder(world, far, reacher.known, reacher.progress)
+    if not finder.run() and not (finder.learn(reacher.about(made)) and finder.run()):
         found = reacher.reach(made, and_(far, quiet(world)), "no run ends while it waits for the goal")
         if isinstance(found, Trail):
             return Failure((reacher.shortest(found).run("the run without the goal"),))
@@ -47,4 +49,23 @@ def constant_in_the_end(reacher: Reacher, question: Evades) -> Outcome:
     return Established(NOTHING, (Proof(made, FALSE, derivation.clauses, KEPT),), (derivation,))
 
 
-RULES: dict[type[Question], list[Rule]] = {Evades: [constant_in_the_end]}
+def no_return(reacher: Reacher, question: Evades) -> Outcome:
+    """Exact: a fair run can wait for the goal for ever when a saved state of it comes again by a fair run."""
+    waits, far = waiting(reacher, question)
+    made, again = evading(waits, far, pressing(reacher.circuit, reacher.environment))
+    found = reacher.reach(made, again, "no fair run that waits for the goal comes again to a state that it has left")
+    if isinstance(found, Proof):
+        return Established("No state in which a run waits for the goal comes again by a fair run that waits.", (found,))
+    return _failure(reacher.shortest(found))
+
+
+def _failure(trail: Trail) -> Failure:
+    entry = max(i for i, s in enumerate(trail.states) if not s[SAVED])
+    before = replace(trail, states=trail.states[: entry + 1]).run("the run without the goal")
+    around = replace(trail, states=trail.states[entry:]).run("").states
+    if len(around) == 1:
+        return Failure((before,))
+    return Failure((replace(before, states=(*before.states, *around[1:-1]), loop=len(before.states) - 1),))
+
+
+RULES: dict[type[Question], list[Rule]] = {Evades: [constant_in_the_end, no_return]}

@@ -13,9 +13,11 @@ from settled.verify.questions import Oscillates, Question
 from settled.verify.rules import Established, Failure, Outcome, Rule
 from settled.verify.stable_states import Query
 from settled.verify.symbolic.certificates import Proof
+from settled.verify.symbolic.constancy import Finder, World
 from settled.verify.symbolic.reach import Reacher, Trail
 
 MOST = 2
+ALL_CONSTANT = "Node by node it follows that it is constant in the end of a fair run with the inputs held: it settles."
 
 
 def no_loops(reacher: Reacher, _: Oscillates) -> Outcome:
@@ -41,6 +43,19 @@ def _keeps(reacher: Reacher, node: str) -> bool:
     query = Query()
     query.clauses().require(at[0], not_(at[1]))
     return query.true_variables() is None
+
+
+def constant_in_the_end(reacher: Reacher, _: Oscillates) -> Outcome:
+    """If by the argument of `constancy` every node is constant in the end while the inputs are held, runs settle.
+
+    `no_loops` for loops that what is reachable, or what other nodes come to, keeps from going round.
+    """
+    made = reacher.base
+    finder = Finder(World(made, made.environs), TRUE, reacher.known, reacher.progress)
+    finder.run()
+    moving, derivation = finder.moving, finder.derivation()
+    finder.close()
+    return None if moving else Established(ALL_CONSTANT, (), (derivation,))
 
 
 def few_changes(reacher: Reacher, _: Oscillates) -> Outcome:
@@ -131,4 +146,6 @@ def _ways_out(reacher: Reacher, state: Mapping[str, int]) -> dict[str, bool]:
     return {"some_run_settles": False} if isinstance(found, Proof) else {}
 
 
-RULES: dict[type[Question], list[Rule]] = {Oscillates: [no_loops, few_changes, no_loop_goes_round, no_return]}
+RULES: dict[type[Question], list[Rule]] = {
+    Oscillates: [no_loops, constant_in_the_end, few_changes, no_loop_goes_round, no_return]
+}

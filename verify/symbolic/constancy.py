@@ -197,12 +197,13 @@ class Finder:
             self._add(equal(self._pairs[v]))
         self.learn(clauses)
 
-    def learn(self, clauses: Iterable[Clause]) -> None:
-        """Use more clauses that hold in every reachable state."""
+    def learn(self, clauses: Iterable[Clause]) -> bool:
+        """Use more clauses that hold in every reachable state; whether there are any."""
         known = set(self.clauses)
         more = [clause for clause in clauses if clause not in known]
         self.clauses += more
         self._require(*map(expression, more))
+        return bool(more)
 
     def close(self) -> None:
         """Free the solver."""
@@ -222,13 +223,15 @@ class Finder:
         """The argument as far as it goes."""
         return Derivation(self.world, self.far, tuple(self.clauses), tuple(self.steps), self.closed)
 
-    def run(self) -> None:
-        """Take every step that can be taken, first those that follow from what is said of signals near by."""
+    def run(self) -> bool:
+        """Take every step that can be taken, first those about what `far` speaks of and its neighbours; whether that
+        leaves nothing."""
         near = self._near()
         begun = dict.fromkeys(v for v in (*support(self.far), *self.world.held) for v in (v, *near[v]))
         self._spread(begun, near, self._ripe)
         while not self.closed and self._spread(dict.fromkeys(self.world.motions), near, self._open):
             pass
+        return self.closed
 
     def _spread(self, todo: dict[str, None], near: dict[str, set[str]], which: Choice) -> bool:
         """Take the steps that `which` offers about variables, then about those near by; whether there were any."""
@@ -314,5 +317,3 @@ def equal(pair: tuple[int, int]) -> list[list[int]]:
 def quiet(world: World) -> Expr:
     """Nothing presses: a run may end here."""
     return and_(*(not_(e) for e in world.presses.values()))
-
-

@@ -81,14 +81,20 @@ class Reacher:
         Guessed at first; each proof about the circuit without observers adds what it rests on.
         """
         if self._known is None:
-            large = len(self.circuit.nodes) >= LARGE
-            self._known = [_named(self.base, c) for c in guessed(self.base, self.progress)] if large else ()
+            found = guessed(self.base, self.progress) if self._large else []
+            self._known = [_named(self.base, clause) for clause in found]
         return self._known
 
-    def about(self, made: System) -> tuple[Clause, ...]:
-        """What is known, and clauses about observers that are inductive with it; the latter guessed near by."""
+    @property
+    def _large(self) -> bool:
+        return len(self.circuit.nodes) >= LARGE
+
+    def about(self, made: System) -> list[Clause]:
+        """Clauses about observers that are inductive together with what is known; guessed, in large circuits."""
+        if not self._large:
+            return []
         seeds = [_numbered(made, clause) for clause in self.known]
-        return (*self.known, *(_named(made, clause) for clause in guessed_about(made, seeds, self.progress)))
+        return [_named(made, clause) for clause in guessed_about(made, seeds, self.progress)]
 
     @contextmanager
     def within(self, share: float) -> Iterator[None]:
