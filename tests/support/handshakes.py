@@ -11,7 +11,7 @@ from math import comb
 
 from settled.models.circuit import Circuit
 from settled.models.environment import Environment, Guard
-from settled.models.logic import Expr, and_, not_, or_, var
+from settled.models.logic import Expr, and_, not_, or_, rename, var
 
 Case = tuple[Circuit, Environment]
 
@@ -45,12 +45,24 @@ def pipeline(stages: int, ends: bool = True, inverters: bool = False, winners: s
     return closed(f"pipeline of {stages}", excitation, {n for n in excitation if n[0] == "n"}, winners)
 
 
+def open_pipeline(stages: int) -> Case:
+    """A pipeline with separate inverters between a sender, which offers with `rin`, and a receiver, which takes with
+    `aout`: the four-phase protocol at either end, written as guards."""
+    circuit, environment = pipeline(stages, inverters=True)
+    ends = {"e": var("rin"), "k": var("aout")}
+    nodes = tuple(n for n in circuit.nodes if n not in ends)
+    excitation = dict(zip(nodes, rename([circuit.excitation[n] for n in nodes], ends), strict=True))
+    first, last = var("c1"), var(f"c{stages}")
+    guards = {"rin": Guard(not_(first), first, must=True), "aout": Guard(last, not_(last), must=True)}
+    start = {n: environment.start[n] for n in nodes} | {"rin": 0, "aout": 0}
+    opened = Circuit(f"open pipeline of {stages}", ("rin", "aout"), nodes, excitation, nodes)
+    return opened, Environment(mode="input-output", start=start, guards=guards)
+
+
 def ring(stages: int, changes: int, winners: str = "any") -> Case:
     """A ring whose neighbours differ in `changes` places."""
     names = [f"c{i}" for i in range(stages)]
-    excitation = {
-        n: c_element(n, var(names[i - 1]), not_(var(names[(i + 1) % stages]))) for i, n in enumerate(names)
-    }
+    excitation = {n: c_element(n, var(names[i - 1]), not_(var(names[(i + 1) % stages]))) for i, n in enumerate(names)}
     high = {n for i, n in enumerate(names) if i < changes and i % 2}
     return closed(f"ring of {stages}", excitation, high, winners)
 
@@ -82,9 +94,7 @@ def arbiter_tree(clients: int, winners: str = "any") -> Case:
     return circuit, Environment(mode="input-output", start=start, guards=guards)
 
 
-def _inner(
-    users: list[tuple[str, str]], excitation: dict[str, Expr], pairs: list[tuple[str, str]]
-) -> tuple[str, str]:
+def _inner(users: list[tuple[str, str]], excitation: dict[str, Expr], pairs: list[tuple[str, str]]) -> tuple[str, str]:
     """An element between two users, each a request and a grant; gives the request and the grant of the one above."""
     number = len(pairs)
     up, down = f"up{number}", f"down{number}"
