@@ -24,6 +24,7 @@ from settled.verify.questions import (
 )
 from settled.verify.rules import Established, Outcome, Rule, hazards, progress, races, rings, settling, states
 from settled.verify.symbolic.certificates import Certificate, Proof
+from settled.verify.symbolic.formula import Progress
 from settled.verify.symbolic.reach import Reacher
 
 SHARE = 0.4
@@ -39,7 +40,7 @@ RULES: dict[type[Question], list[Rule]] = {
 
 def answer(task: Task, question: Question) -> Answer:
     """Try the rules of the question in turn. Raises `LimitReached`, and `CertificateFailed` for a wrong proof."""
-    reacher = Reacher(task)
+    reacher = reacher_of(task)
     try:
         if isinstance(question, Flickers | Oscillates):
             rings.prepare(reacher)
@@ -52,6 +53,14 @@ def answer(task: Task, question: Question) -> Answer:
     except TooManyOrders as many:
         return undecided(str(many), NAME)
     return undecided("none of the rules decides", NAME)
+
+
+def reacher_of(task: Task) -> Reacher:
+    """What earlier questions about the circuit have left, under the limits of this one."""
+    reacher: Reacher = task.memory.get("reacher") or Reacher(task)
+    task.memory["reacher"] = reacher
+    reacher.task, reacher.progress = task, Progress(task.limits)
+    return reacher
 
 
 def shares(rules: list[Rule]) -> Iterator[tuple[Rule, float]]:
