@@ -77,6 +77,7 @@ def _shown(check: str, question: Question, answer: Answer) -> dict[str, object]:
 @pytest.mark.parametrize("check", CHECKS)
 def test_the_engine_decides_as_the_oracle_does(check: str, guesses: bool, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(search, "LARGE", 0 if guesses else 100)
+    monkeypatch.setattr(search, "SOON", 0.0)
     verdicts: Counter[str] = Counter()
     for seed in range(25 if guesses else 120):
         question = some_question(f"engine {guesses} {seed}", check)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Collection, Hashable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
 from functools import cache
 from itertools import combinations, product
 
@@ -20,19 +21,31 @@ from settled.verify.symbolic.formula import Cube
 from settled.verify.symbolic.simulation import Bits, Places, Words
 
 NEAR = 10
-SHARED = 100
+SHARED, LINKED = 100, 40
 FIRST_BLOCK, LARGEST_BLOCK = 16, 1 << 20
 
 Shape = tuple[Hashable, ...]
-Near = Mapping[Shape, Sequence[tuple[int, ...]]]
-"""Positions of variables near one another, by the shape of what they compute."""
+Listed = Sequence[tuple[int, ...]]
+
+
+@dataclass(frozen=True)
+class Near:
+    """Where clauses are guessed, and how many literals they may have.
+
+    * `places`: positions of variables near one another, by the shape of what they compute.
+    * `links`: for each position those that it is linked with, if only connected sets of variables count.
+    """
+
+    places: Mapping[Shape, Listed]
+    literals: int
+    links: Mapping[int, Collection[int]] | None = None
 
 
 # ---- what is near --------------------------------------------------------------------------------------------------
 
 
 def neighbourhoods(made: System) -> Near:
-    """For each node the positions of the nearest variables: itself, what it reads, what these read.
+    """For each node the nearest variables, itself, what it reads, what these read: any three of them.
 
     Listed by shape. In large circuits nodes whose surroundings compute the same functions have the same shape, so
     that what one of them shows speaks against a guess for all; in small ones every node has a shape of its own.
@@ -42,13 +55,48 @@ def neighbourhoods(made: System) -> Near:
         near = _nearest(made, [name], 2)
         shape = _shape(made, near) if len(made.circuit.nodes) > SHARED else (name,)
         found[shape].append(tuple(made.number[v] - 1 for v in near))
+    return Near(found, 3)
+
+
+def linked(made: System) -> Near:
+    """For each signal the nearest variables in either direction, readers as well: any four that are connected.
+
+    An input reads what its guard reads. By shape, as in `neighbourhoods`, in all but the smallest circuits.
+    """
+    links = _links(made)
+    found: dict[Shape, list[tuple[int, ...]]] = defaultdict(list)
+    for name in made.circuit.signals:
+        near = [name]
+        for s in near:
+            near += [v for v in links[s] if v not in near] if len(near) < NEAR else []
+        shape = _shape(made, near[:NEAR]) if len(made.circuit.nodes) > LINKED else (name,)
+        found[shape].append(tuple(made.number[v] - 1 for v in near[:NEAR]))
+    number = made.number
+    return Near(found, 4, {number[s] - 1: {number[v] - 1 for v in others} for s, others in links.items()})
+
+
+def _links(made: System) -> dict[str, dict[str, None]]:
+    """For each signal what it reads and what reads it, apart from itself."""
+    circuit = made.circuit
+    reads = {n: support(circuit.excitation[n]) for n in circuit.nodes}
+    for x in circuit.inputs:
+        guard = made.environment.guard(x)
+        reads[x] = support(*circuit.resolve(guard.rises, guard.falls))
+    found = {s: {r: None for r in reads[s] if r != s} for s in circuit.signals}
+    for s in circuit.signals:
+        for r in reads[s]:
+            if r != s:
+                found[r][s] = None
     return found
 
 
-def watched(made: System, name: str) -> tuple[int, ...]:
-    """Positions of an observer, what it reads, and what that reads."""
-    read = [v for v in support(*made.one_copy[name]) if v in made.number]
-    return tuple(made.number[v] - 1 for v in _nearest(made, [name, *read], 1))
+def watched(made: System) -> Near:
+    """For each observer the nearest variables: itself, what it reads, what that reads."""
+    found: dict[Shape, list[tuple[int, ...]]] = {}
+    for name in made.watching:
+        read = [v for v in support(*made.one_copy[name]) if v in made.number]
+        found[(name,)] = [tuple(made.number[v] - 1 for v in _nearest(made, [name, *read], 1))]
+    return Near(found, 3)
 
 
 def _nearest(made: System, names: Sequence[str], rings: int) -> list[str]:
@@ -71,7 +119,7 @@ def _shape(made: System, near: Sequence[str]) -> Shape:
 def alike(made: System, near: Near) -> Places:
     """A number for each variable, the same for those of one shape."""
     found = np.arange(len(made.variables))
-    for places in near.values():
+    for places in near.places.values():
         for place in places:
             found[place[0]] = places[0][0]
     return found
@@ -80,21 +128,19 @@ def alike(made: System, near: Near) -> Places:
 # ---- cubes that no sample shows ------------------------------------------------------------------------------------
 
 
-def unseen(near: Near, samples: Words, literals: int, known: Collection[Cube] = ()) -> list[Cube]:
-    """Cubes of up to so many literals over a neighbourhood that no sample shows, none of them within another of it.
+def unseen(near: Near, samples: Words, known: Collection[Cube] = ()) -> list[Cube]:
+    """Cubes over neighbourhoods that no sample shows, none of them within another over the same neighbourhood.
 
     What lies within `known` cubes is not found.
     """
-    return _unseen(near, near, samples, literals, (), set(known))
+    return _unseen(near, near.places, samples, (), set(known))
 
 
-def unseen_within(
-    near: Near, samples: Words, literals: int, hopeless: Collection[Cube], known: Collection[Cube]
-) -> list[Cube]:
+def unseen_within(near: Near, samples: Words, hopeless: Collection[Cube], known: Collection[Cube]) -> list[Cube]:
     """As `unseen`, in the neighbourhoods of `hopeless` cubes, which are not found and hide no others."""
-    around = {frozenset(abs(lit) - 1 for lit in cube) for cube in hopeless if len(cube) < literals}
+    around = {frozenset(abs(lit) - 1 for lit in cube) for cube in hopeless if len(cube) < near.literals}
     places_of: dict[int, list[tuple[Shape, tuple[int, ...]]]] = defaultdict(list)
-    for shape, places in near.items():
+    for shape, places in near.places.items():
         for place in places:
             for v in place:
                 places_of[v].append((shape, place))
@@ -103,27 +149,43 @@ def unseen_within(
         for shape, place in places_of[min(variables)]:
             if variables.issubset(place):
                 close[shape][place] = None
-    return _unseen(near, {s: list(p) for s, p in close.items()}, samples, literals, hopeless, set(known))
+    return _unseen(near, {s: list(p) for s, p in close.items()}, samples, hopeless, set(known))
 
 
 def _unseen(
-    near: Near, close: Near, samples: Words, literals: int, hopeless: Collection[Cube], kept: set[Cube]
+    near: Near, close: Mapping[Shape, Listed], samples: Words, hopeless: Collection[Cube], kept: set[Cube]
 ) -> list[Cube]:
     found: dict[Cube, None] = {}
     for shape, places in close.items():
-        rows, wanted = np.array(near[shape], np.int64), np.array(places, np.int64)
-        hides = np.zeros(3 ** rows.shape[1], bool)
-        for size in range(1, min(literals, rows.shape[1]) + 1):
-            cubes, codes, parts = _all_cubes(rows.shape[1], size)
-            open_ = np.flatnonzero(~hides[parts].any(axis=1))
+        rows, wanted = np.array(near.places[shape], np.int64), np.array(places, np.int64)
+        width = rows.shape[1]
+        hides = np.zeros(3**width, bool)
+        for size in range(1, min(near.literals, width) + 1):
+            cubes, codes, parts = _all_cubes(width, size)
+            hides[codes] = hides[parts].any(axis=1)
+            open_ = np.flatnonzero(~hides[codes] & _counted(near, near.places[shape][0], size))
             never = open_[_never(rows, cubes[open_], samples)]
-            hides[codes] = True
-            hides[codes[open_]] = False
             for which in never.tolist():
                 instances = list(_instances(wanted, cubes[which]))
                 hides[codes[which]] = not any(cube in hopeless for cube in instances)
                 found |= dict.fromkeys(c for c in instances if c not in hopeless and not _within(c, kept))
     return sorted(found)
+
+
+def _counted(near: Near, place: tuple[int, ...], size: int) -> Bits:
+    """Which of all cubes of a size over a place count."""
+    sets = combinations(place, size)
+    counted = [near.links is None or _connected(chosen, near.links) for chosen in sets]
+    return np.repeat(np.array(counted, bool), 1 << size)
+
+
+def _connected(chosen: Sequence[int], links: Mapping[int, Collection[int]]) -> bool:
+    reached, left = [chosen[0]], set(chosen[1:])
+    for v in reached:
+        more = left.intersection(links[v])
+        reached += sorted(more)
+        left -= more
+    return not left
 
 
 def _within(cube: Cube, kept: set[Cube]) -> bool:

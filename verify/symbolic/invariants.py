@@ -14,50 +14,51 @@ import numpy as np
 
 from settled.encodings.system import System, system
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
-from settled.verify.symbolic.guesses import Near, alike, left_unseen, neighbourhoods, unseen, unseen_within, watched
+from settled.verify.symbolic.guesses import Near, alike, left_unseen, unseen, unseen_within, watched
 from settled.verify.symbolic.local import Local
 from settled.verify.symbolic.simulation import Simulation, Words
 
-SMALL, FEW_CUBES = 400, 1_000
+SMALL, FEW_CUBES = 600, 1_000
 WIDTH = 8
 MOMENTS = 16
-LITERALS = 3
 RINGS = 2
 STEADY = 0.99
 STARTS = 64
 
 
-def guessed(made: System, progress: Progress) -> list[Cube]:
-    """Clauses that are true in every reachable state and inductive together. Raises `LimitReached`."""
+def guessed(made: System, near: Near, known: Sequence[Cube], progress: Progress) -> list[Cube]:
+    """Clauses that are true in every reachable state and inductive together with the `known` ones.
+
+    Raises `LimitReached`.
+    """
     formula = Formula(made)
     progress.at("random runs")
-    near = neighbourhoods(made)
+    given = [negated(clause) for clause in known]
     runs = Simulation(_eager(made), starts(formula, progress), progress)
     samples = np.concatenate(runs.explore(alike(made, near)), axis=1)
     runs.spread(WIDTH)
-    cubes = unseen(near, samples, LITERALS)
+    cubes = unseen(near, samples, given)
     for apart in (3, 6, 12, 24):
         more = runs.sample(MOMENTS, apart)
         samples = np.concatenate([samples, more], axis=1)
         left = left_unseen(cubes, more)
         steady = len(left) >= STEADY * len(cubes)
-        cubes = left if steady else unseen(near, samples, LITERALS)
+        cubes = left if steady else unseen(near, samples, given)
         if steady:
             break
-    return _kept(formula, near, samples, cubes, progress)
+    return _kept(formula, near, samples, cubes, given, progress)
 
 
 def guessed_about(made: System, known: Sequence[Cube], progress: Progress) -> list[Cube]:
     """Clauses about what observers watch, inductive together with the `known` ones. Raises `LimitReached`."""
     progress.at("random runs with observers")
     formula = Formula(made)
-    near: Near = {(v,): [watched(made, v)] for v in made.watching}
     runs = Simulation(_eager(made), starts(formula, progress), progress)
     samples = np.concatenate(runs.explore(np.arange(len(made.variables))), axis=1)
     runs.spread(WIDTH)
     samples = np.concatenate([samples, runs.sample(MOMENTS)], axis=1)
     watching = {made.number[v] for v in made.watching}
-    cubes = unseen(near, samples, LITERALS, [negated(c) for c in known])
+    cubes = unseen(watched(made), samples, [negated(clause) for clause in known])
     cubes = [cube for cube in cubes if watching & set(map(abs, cube))]
     return [negated(cube) for cube in inductive(formula, cubes, known, progress)]
 
@@ -70,15 +71,17 @@ def _eager(made: System) -> System:
     return replace(made, may={**eager.may, **watching}, selectors=selectors)
 
 
-def _kept(formula: Formula, near: Near, samples: Words, cubes: list[Cube], progress: Progress) -> list[Cube]:
+def _kept(
+    formula: Formula, near: Near, samples: Words, cubes: list[Cube], given: list[Cube], progress: Progress
+) -> list[Cube]:
     """The clauses that are inductive; where a cube was too large, the cubes of more literals within it are tried."""
     kept: list[Cube] = []
     hopeless: set[Cube] = set()
-    for _ in range(LITERALS):
-        found = inductive(formula, cubes, [negated(cube) for cube in kept], progress)
+    for _ in range(near.literals):
+        found = inductive(formula, cubes, [negated(cube) for cube in (*given, *kept)], progress)
         kept += found
         hopeless |= set(cubes) - set(found)
-        cubes = unseen_within(near, samples, LITERALS, hopeless, kept)
+        cubes = unseen_within(near, samples, hopeless, [*given, *kept])
         if not cubes:
             break
     return [negated(cube) for cube in kept]

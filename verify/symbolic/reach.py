@@ -15,6 +15,7 @@ from settled.verify.limits import LimitReached
 from settled.verify.questions import Task
 from settled.verify.symbolic.certificates import Clause, Proof
 from settled.verify.symbolic.formula import Cube, Formula, Progress, Query
+from settled.verify.symbolic.guesses import Near, linked, neighbourhoods
 from settled.verify.symbolic.invariants import RINGS, guessed, guessed_about
 from settled.verify.symbolic.local import Local
 from settled.verify.symbolic.pdr import Invariant, Path, Pdr
@@ -25,6 +26,7 @@ State = Mapping[str, int]
 LARGE = 24
 UNROLLED = 1_000_000
 SHORTENING = 0.2
+SOON, GUESSING = 0.05, 0.4
 
 
 @dataclass(frozen=True)
@@ -68,6 +70,7 @@ class Reacher:
         self.progress = Progress(task.limits)
         self.memory: dict[str, Any] = {}
         self._known: Sequence[Clause] | None = None
+        self._all_guessed = False
 
     @cached_property
     def base(self) -> System:
@@ -80,10 +83,24 @@ class Reacher:
 
         Guessed at first; each proof about the circuit without observers adds what it rests on.
         """
-        if self._known is None:
-            found = guessed(self.base, self.progress) if self._large else []
-            self._known = [_named(self.base, clause) for clause in found]
-        return self._known
+        if self._known is None and self._large:
+            self._guess(neighbourhoods(self.base))
+        return self._known or ()
+
+    def _guess(self, near: Near) -> None:
+        """Learn from guesses."""
+        known = [_numbered(self.base, clause) for clause in self._known or ()]
+        found = guessed(self.base, near, known, self.progress)
+        self._known = [*(self._known or ()), *(_named(self.base, clause) for clause in found)]
+
+    def _guess_more(self) -> None:
+        """Learn, once, from guesses that take longer, for a share of the time."""
+        self._all_guessed = True
+        try:
+            with self.within(GUESSING):
+                self._guess(linked(self.base))
+        except LimitReached:
+            self.progress.tick()
 
     @property
     def _large(self) -> bool:
@@ -93,8 +110,7 @@ class Reacher:
         """Clauses about observers that are inductive together with what is known; guessed, in large circuits."""
         if not self._large:
             return []
-        seeds = [_numbered(made, clause) for clause in self.known]
-        return [_named(made, clause) for clause in guessed_about(made, seeds, self.progress)]
+        return [_named(made, clause) for clause in guessed_about(made, self._seeds(made), self.progress)]
 
     @contextmanager
     def within(self, share: float) -> Iterator[None]:
@@ -113,17 +129,39 @@ class Reacher:
         them exclude are left out of the search.
         """
         formula = Formula(made)
-        seeds = [_numbered(made, clause) for clause in self.known]
+        seeds = self._seeds(made)
         open_ = self._open(formula, bad, seeds)
-        found: Invariant | Path = Invariant(tuple(seeds))
-        if open_:
-            found = Pdr(formula, or_(*open_), self.progress, seeds).run()
+        found = self._soon(formula, open_, seeds)
+        if found is None:
+            self._guess_more()
+            seeds = self._seeds(made)
+            found = self._searched(formula, self._open(formula, or_(*open_), seeds), seeds)
         if isinstance(found, Path):
             return _trail(made, found, bad)
         clauses = tuple(_named(made, clause) for clause in found.clauses)
         if made is self.base:
             self._known = clauses
         return Proof(made, bad, clauses, claim)
+
+    def _seeds(self, made: System) -> list[Cube]:
+        return [_numbered(made, clause) for clause in self.known]
+
+    def _soon(self, formula: Formula, open_: list[Expr], seeds: list[Cube]) -> Invariant | Path | None:
+        """What the search comes to; in large circuits None when that takes long and more may be guessed first."""
+        if not self._large or self._all_guessed:
+            return self._searched(formula, open_, seeds)
+        try:
+            with self.within(SOON):
+                return self._searched(formula, open_, seeds)
+        except LimitReached:
+            self.progress.tick()
+            return None
+
+    def _searched(self, formula: Formula, open_: list[Expr], seeds: list[Cube]) -> Invariant | Path:
+        """Whether one of several bad states can be reached."""
+        if not open_:
+            return Invariant(tuple(seeds))
+        return Pdr(formula, or_(*open_), self.progress, seeds).run()
 
     def _open(self, formula: Formula, bad: Expr, seeds: list[Cube]) -> list[Expr]:
         """The alternatives of `bad` that known clauses near them do not exclude."""
