@@ -11,7 +11,7 @@ from settled.models.circuit import Circuit
 from settled.models.environment import Environment
 from settled.models.logic import FALSE, Expr, and_, ite, not_, or_, rename, var, xor
 
-PARTED, PARTS = "parted", "parts"
+PARTED, PARTS = "runs parted", "runs part"
 
 
 def twin(name: str) -> str:

@@ -12,7 +12,9 @@ import pytest
 from handshakes import pipeline
 from random_circuits import Question, random_question
 
+from settled.encodings.monitors import evading, returning
 from settled.encodings.motions import motions, pressing
+from settled.encodings.twins import twins
 from settled.models.circuit import Circuit
 from settled.models.logic import evaluate, not_, var
 from settled.models.states import Behaviour, Situation, unpack
@@ -118,3 +120,15 @@ def test_motions_and_what_presses_are_those_of_the_meaning(mode: str | None, sha
 
 def names_of(circuit: Circuit, packed: int) -> set[str]:
     return {s for s, i in circuit.place.items() if packed >> i & 1}
+
+
+def test_what_is_added_to_a_circuit_has_names_with_blanks_which_no_signal_has() -> None:
+    circuit, environment, _ = random_question("names", "settles", winners="one", mode="fundamental")
+    made, far = progress.waiting(Reacher(Task(circuit, environment, Limits())), Evades(var("a"), var("p")))
+    systems = [
+        evading(made, far, pressing(circuit, environment))[0],
+        returning(circuit, environment, circuit.nodes)[0],
+        twins(circuit, environment)[0],
+    ]
+    added = [name for s in systems for name in (*s.variables, *s.selectors) if name not in circuit.signals]
+    assert len(added) > 20 and all(" " in name for name in added)
