@@ -167,5 +167,3 @@ def exit_status(reports: Sequence[FileReport], problems: Sequence[Problem] = (),
         return 1
     open_ = any(r.verdict == "undecided" or (r.vacuous and not allow_vacuous) for r in results)
     return 3 if open_ else 0
-
-

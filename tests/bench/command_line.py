@@ -1,6 +1,6 @@
 """How quickly the command line answers: whole processes, best of five, with peak memory and beside bare Python.
 
-    .venv/bin/python tests/bench/command_line.py
+.venv/bin/python tests/bench/command_line.py
 """
 
 from __future__ import annotations

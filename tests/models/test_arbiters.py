@@ -65,7 +65,9 @@ def test_under_wire_delays_it_is_a_closed_cell() -> None:
 
 
 def test_it_withdraws_an_excitation_only_between_its_two_grants() -> None:
-    text = TWO.replace("DELAY", "gate") + """
+    text = (
+        TWO.replace("DELAY", "gate")
+        + """
 [environment]
 mode = "input-output"
 start = { r1 = 0, r2 = 0, g1 = 0, g2 = 0 }
@@ -88,6 +90,7 @@ check = "leads-to"
 from = "r1"
 to = "g1"
 """
+    )
     whole, excepted, exclusion, some, fair = check("two.toml", text=text).results
     assert whole.facts["withdrawn"] in (["g1"], ["g2"])
     assert excepted.verdict == exclusion.verdict == "proved"

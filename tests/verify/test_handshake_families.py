@@ -32,10 +32,13 @@ def test_arbiter_tree(clients: int, winners: str) -> None:
 
 @pytest.mark.parametrize("cells", [3, 4, 5])
 def test_token_ring(cells: int) -> None:
-    assert verdicts(
-        token_ring(cells),
-        Property("exclusion", "never", {"expr": two_turns(cells)}),
-        Property("no choice", "speed-independent"),
-        Property("live", "deadlock-free"),
-        Property("turns", "leads-to", {"from": not_(var("t1")), "to": var("t1")}),
-    ) == ["proved"] * 4
+    assert (
+        verdicts(
+            token_ring(cells),
+            Property("exclusion", "never", {"expr": two_turns(cells)}),
+            Property("no choice", "speed-independent"),
+            Property("live", "deadlock-free"),
+            Property("turns", "leads-to", {"from": not_(var("t1")), "to": var("t1")}),
+        )
+        == ["proved"] * 4
+    )
