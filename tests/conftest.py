@@ -1,4 +1,4 @@
-"""How many random circuits the loops over engines and rules go through: a quarter of them, or all."""
+"""How many random circuits the long loops go through: a quarter of them, or all."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ import pytest
 
 def pytest_addoption(parser: pytest.Parser) -> None:
     """The option for the long way."""
-    parser.addoption("--thorough", action="store_true", help="loops over engines and rules in full, not a quarter")
+    parser.addoption("--thorough", action="store_true", help="long loops over random cases in full, not a quarter")
 
 
 @pytest.fixture

@@ -75,11 +75,13 @@ def _shown(check: str, question: Question, answer: Answer) -> dict[str, object]:
 
 @pytest.mark.parametrize("guesses", [False, True])
 @pytest.mark.parametrize("check", CHECKS)
-def test_the_engine_decides_as_the_oracle_does(check: str, guesses: bool, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_the_engine_decides_as_the_oracle_does(
+    check: str, guesses: bool, share: Callable[[int], int], monkeypatch: pytest.MonkeyPatch
+) -> None:
     monkeypatch.setattr(search, "LARGE", 0 if guesses else 100)
     monkeypatch.setattr(search, "SOON", 0.0)
     verdicts: Counter[str] = Counter()
-    for seed in range(25 if guesses else 120):
+    for seed in range(share(80 if guesses else 400)):
         question = some_question(f"engine {guesses} {seed}", check)
         answer = reach.answer(task_of(question), kinds()[check].question(question.circuit, question.options))
         assert not list(complaints(check, question, answer)), seed

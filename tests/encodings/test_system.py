@@ -123,21 +123,23 @@ def some_case(seed: str, winners: str, **limits: Any) -> tuple[Circuit, Environm
 
 @pytest.mark.parametrize("changes", MODES)
 @pytest.mark.parametrize("winners", ["any", "one", "pairs"])
-def test_steps_of_the_system_are_the_moves_of_the_circuit(changes: str, winners: str) -> None:
+def test_steps_of_the_system_are_the_moves_of_the_circuit(
+    changes: str, winners: str, share: Callable[[int], int]
+) -> None:
     where = MODES[changes] or {"mode": "fundamental", "changes": changes}
     total = 0
-    for seed in range(40):
+    for seed in range(share(80)):
         circuit, environment = some_case(f"system {seed}", winners, **where)
         found = Enumerated(system(circuit, environment))
         total += agree(Behaviour(circuit, environment), found.starts(), found.after)
-    assert total > 300
+    assert total > share(600)
 
 
 @pytest.mark.parametrize("changes", MODES)
 @pytest.mark.parametrize("winners", ["any", "one", "pairs"])
-def test_the_two_copy_formula_has_the_same_moves(changes: str, winners: str) -> None:
+def test_the_two_copy_formula_has_the_same_moves(changes: str, winners: str, share: Callable[[int], int]) -> None:
     where = MODES[changes] or {"mode": "fundamental", "changes": changes}
-    for seed in range(8):
+    for seed in range(share(16)):
         circuit, environment = some_case(f"moves {seed}", winners, nodes=4, **where)
         found = Formulated(system(circuit, environment))
         agree(Behaviour(circuit, environment), found.starts(), found.after)

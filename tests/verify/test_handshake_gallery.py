@@ -28,7 +28,6 @@ EXPECTED = {
     "handshake_half_buffer_split": {
         "speed-independent": False,
         "deadlock-free": True,
-        "every reading reaches the radio": False,
         "the radio is asked for a reading that is held": False,
     },
     "handshake_c_element": {
