@@ -81,7 +81,7 @@ def test_the_engine_decides_as_the_oracle_does(
     monkeypatch.setattr(search, "LARGE", 0 if guesses else 100)
     monkeypatch.setattr(search, "SOON", 0.0)
     verdicts: Counter[str] = Counter()
-    for seed in range(share(80 if guesses else 400)):
+    for seed in range(share(160 if guesses else 400)):
         question = some_question(f"engine {guesses} {seed}", check)
         answer = reach.answer(task_of(question), kinds()[check].question(question.circuit, question.options))
         assert not list(complaints(check, question, answer)), seed
