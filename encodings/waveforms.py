@@ -12,7 +12,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
-from settled.models.circuit import Circuit
+from settled.models.circuit import Circuit, definition_order
 from settled.models.environment import Environment
 from settled.models.logic import FALSE, Expr, and_, ite, not_, or_, rename, support, var, xor
 
@@ -49,8 +49,6 @@ class _Making:
 
     def _order(self) -> list[str]:
         """The nodes, each after those that it reads."""
-        from settled.models.circuit import definition_order
-
         return definition_order({n: self.circuit.excitation[n] for n in self.circuit.nodes})
 
     def of(self, signal: Expr) -> Waveforms:
