@@ -9,10 +9,10 @@ from pysat.solvers import Solver
 from settled.encodings.clauses import Clauses
 from settled.encodings.smtlib import script
 from settled.models.logic import FALSE, Expr, or_, support, var
+from settled.verify.asking import has_model
 from settled.verify.limits import Limits
 
 SOLVER = "glucose4"
-CONFLICTS = 2_000
 
 
 class NotConfirmed(Exception):
@@ -44,12 +44,7 @@ class Never:
 
     def solve(self, assumptions: Sequence[int]) -> bool:
         """Whether the conditions have a model under assumptions. Raises `LimitReached`."""
-        while True:
-            self._solver.conf_budget(CONFLICTS)
-            found: bool | None = self._solver.solve_limited(assumptions=list(assumptions))
-            self.limits.check("in a question to SAT")
-            if found is not None:
-                return found
+        return has_model(self._solver, assumptions, lambda: self.limits.check("in a question to SAT"))
 
     def is_true(self, e: Expr) -> bool:
         """Whether an expression that has been asked about is true in the model found last."""

@@ -29,9 +29,10 @@ from settled.encodings.motions import Motion, motions, pressing
 from settled.encodings.smtlib import script
 from settled.encodings.system import System
 from settled.models.logic import FALSE, TRUE, Expr, and_, not_, or_, rename, support, var, xor
+from settled.verify.asking import has_model
 from settled.verify.limits import Limits
 from settled.verify.symbolic.certificates import BATCH, CertificateFailed, Clause, batched, expression, impossible
-from settled.verify.symbolic.formula import CONFLICTS, SOLVER, Progress
+from settled.verify.symbolic.formula import SOLVER, Progress
 
 CONSTANT, AT_REST = "constant", "at rest"
 
@@ -300,12 +301,7 @@ class Finder:
             self._empty |= self._solver.add_clause(list(clause), no_return=False) is False
 
     def _solve(self, assumptions: Sequence[int]) -> bool:
-        while True:
-            self._solver.conf_budget(CONFLICTS)
-            found: bool | None = self._solver.solve_limited(assumptions=list(assumptions))
-            self.progress.tick()
-            if found is not None:
-                return found
+        return has_model(self._solver, assumptions, self.progress.tick)
 
 
 def equal(pair: tuple[int, int]) -> list[list[int]]:

@@ -13,12 +13,12 @@ from pysat.solvers import Solver
 from settled.encodings.clauses import Clauses
 from settled.encodings.system import System
 from settled.models.logic import Expr
+from settled.verify.asking import has_model
 from settled.verify.limits import Limits
 
 Cube = tuple[int, ...]
 
 SOLVER, STEADY_SOLVER = "minisat22", "cadical153"
-CONFLICTS = 2_000
 
 
 class Progress:
@@ -102,12 +102,7 @@ class Query:
 
     def solve(self, assumptions: Sequence[int]) -> bool:
         """Whether the clauses have a model under assumptions. Raises `LimitReached`."""
-        while True:
-            self._solver.conf_budget(CONFLICTS)
-            found: bool | None = self._solver.solve_limited(assumptions=list(assumptions))
-            self.progress.tick()
-            if found is not None:
-                return found
+        return has_model(self._solver, assumptions, self.progress.tick)
 
     def core(self) -> set[int]:
         """Assumptions that together have no model; after an unsuccessful `solve`."""

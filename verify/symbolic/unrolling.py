@@ -8,7 +8,8 @@ from collections.abc import Iterator
 from pysat.solvers import Solver
 
 from settled.models.logic import Expr
-from settled.verify.symbolic.formula import CONFLICTS, SOLVER, Formula, Progress
+from settled.verify.asking import has_model
+from settled.verify.symbolic.formula import SOLVER, Formula, Progress
 from settled.verify.symbolic.pdr import Path
 
 
@@ -19,7 +20,7 @@ def shorter(formula: Formula, bad: Expr, steps: int, progress: Progress) -> Path
         for moment in range(steps):
             progress.at(f"{moment} steps, looking for a shorter run")
             solver.append_formula(list(_moment(formula, moment)))
-            if _solved(solver, _at(formula, wanted, moment), progress):
+            if has_model(solver, [_at(formula, wanted, moment)], progress.tick):
                 model = solver.get_model()
                 places = range(moment + 1)
                 return Path(tuple(tuple(_state(formula, model, at)) for at in places))
@@ -41,15 +42,6 @@ def _moment(formula: Formula, moment: int) -> Iterator[list[int]]:
         return
     for lit, may in formula.may.items():
         yield [-_at(formula, lit, moment), _at(formula, may, moment - 1)]
-
-
-def _solved(solver: Solver, wanted: int, progress: Progress) -> bool:
-    while True:
-        solver.conf_budget(CONFLICTS)
-        found: bool | None = solver.solve_limited(assumptions=[wanted])
-        progress.tick()
-        if found is not None:
-            return found
 
 
 def _state(formula: Formula, model: list[int], moment: int) -> Iterator[int]:
