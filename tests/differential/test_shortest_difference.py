@@ -60,5 +60,5 @@ def test_no_refutation_is_against_the_oracle(share: Callable[[int], int], monkey
         outcome["perhaps fewer"] += "perhaps_fewer" in answer.facts
         outcome["lonely"] += len(answer.runs) == 1
     assert outcome["refuted"] > share(100), outcome
-    assert min(outcome[c] for c in ("single", "simultaneous", "burst")) >= share(5), outcome
+    assert min(outcome[c] for c in ("single", "simultaneous", "burst")) > share(5), outcome
     assert outcome["lonely"] > share(50), outcome
